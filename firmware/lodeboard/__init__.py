@@ -1,0 +1,1 @@
+"""What runs on the pump's board. The same files run under CPython (twin) and MicroPython (boards)."""

@@ -1,0 +1,25 @@
+"""The only file that knows which interpreter runs: MicroPython on a board, CPython on a bench computer."""
+
+MICROPYTHON = True
+try:
+    import gc
+
+    from micropython import const as const
+    from micropython import heap_lock as heap_lock
+    from micropython import heap_unlock as heap_unlock
+
+    collect = gc.collect
+except ImportError:
+    MICROPYTHON = False
+
+    def const(value):  # type: ignore
+        return value
+
+    def heap_lock():  # type: ignore
+        """CPython has no heap lock; the real interpreter proves that nothing allocates."""
+
+    def heap_unlock():  # type: ignore
+        return 0
+
+    def collect():  # type: ignore
+        return 0
