@@ -4,6 +4,10 @@ The order of FIELDS is the layout on the wire (`<i` each). Every value fits a sm
 32-bit board; the host's compiler sees to it that every product in the tick does too.
 """
 
+import binascii
+import struct
+from array import array
+
 from .compat import const
 
 # Sensor channels, in the order in which a Hal delivers raw counts.
@@ -25,9 +29,9 @@ _CHANNEL_FIELDS = (
 )
 CHANNEL_STRIDE = const(8)
 
-FIELDS = tuple(
+FIELDS = tuple([
     name + "_" + field for name in CHANNELS for field in _CHANNEL_FIELDS
-) + (
+]) + (
     # pressures: soft holds the stroke back, hard trips
     "outlet_reverse_soft_pa", "outlet_reverse_hard_pa",
     "inlet_reverse_soft_pa", "inlet_reverse_hard_pa",
@@ -53,3 +57,89 @@ FIELDS = tuple(
 N_FIELDS = len(FIELDS)
 INDEX = {name: i for i, name in enumerate(FIELDS)}
 BLOB_BYTES = 4 * N_FIELDS
+
+
+class Blob:
+    """Bytes that arrive in parts and count only once sealed with their length, CRC and fingerprint."""
+
+    def __init__(self, size: int) -> None:
+        self.data = bytearray(size)
+        self.length = 0
+        self.crc32 = 0
+        self.fingerprint = b"\0" * 8
+        self.sealed = False
+
+    def put(self, offset: int, data: bytes, count: int) -> bool:
+        """Store count bytes at offset; False when they would not fit. Breaks the seal."""
+        self.sealed = False
+        if count > len(data) or offset + count > len(self.data):
+            return False
+        self.data[offset : offset + count] = data[:count]
+        return True
+
+    def crc_now(self) -> int:
+        """CRC-32 of what is stored now."""
+        return binascii.crc32(bytes(self.data[: self.length]))
+
+    def check(self, length: int, crc32: int) -> bool:
+        """Whether the first length bytes have this CRC."""
+        if length > len(self.data):
+            return False
+        self.length = length
+        return self.crc_now() == crc32
+
+
+class Limits:
+    """The rig's limits as sent, the copy in force, and a complement that shows corruption.
+
+    A schedule step may tighten a limit in `active`; `values` stays what the host sent. One word a
+    tick is compared with its complement, so a flipped bit is found within a lap of N_FIELDS ticks.
+    """
+
+    def __init__(self) -> None:
+        self.blob = Blob(BLOB_BYTES)
+        self.values = array("i", [0] * N_FIELDS)
+        self.active = array("i", [0] * N_FIELDS)
+        self.shadow = array("i", [-1] * N_FIELDS)
+        self.at = 0
+
+    def seal(self, length: int, crc32: int, fingerprint: bytes) -> bool:
+        """Take the stored bytes as limits if they are whole."""
+        blob = self.blob
+        if length != BLOB_BYTES or not blob.check(length, crc32):
+            return False
+        for i in range(N_FIELDS):
+            value = struct.unpack_from("<i", blob.data, 4 * i)[0]
+            self.values[i] = value
+            self.active[i] = value
+            self.shadow[i] = ~value
+        blob.crc32 = crc32
+        blob.fingerprint = fingerprint
+        blob.sealed = True
+        return True
+
+    def whole(self) -> bool:
+        """Sealed, and every word still what was sealed."""
+        if not self.blob.sealed or self.blob.crc_now() != self.blob.crc32:
+            return False
+        for i in range(N_FIELDS):
+            if self.values[i] ^ self.shadow[i] != -1:
+                return False
+        return True
+
+    def get(self, name: str) -> int:
+        """A limit in force, by name. For code that runs before arming."""
+        return self.active[INDEX[name]]
+
+    def relax(self) -> None:
+        """Every limit back to the rig's."""
+        values = self.values
+        active = self.active
+        for i in range(N_FIELDS):
+            active[i] = values[i]
+
+    def patrol(self) -> bool:
+        """Compare one more word with its complement; False when they disagree."""
+        i = self.at
+        self.at = i + 1 if i + 1 < N_FIELDS else 0
+        return self.values[i] ^ self.shadow[i] == -1
