@@ -1,0 +1,1 @@
+"""The firmware imported by CPython, against the plant, in virtual time."""

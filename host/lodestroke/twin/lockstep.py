@@ -1,0 +1,61 @@
+"""Firmware and plant in lock-step: one exchange per control tick, shared by twin and virtual board.
+
+Both ends of the link and the drive pass through here and nowhere else, so that the twin and the
+lock-step virtual board cannot differ in what the firmware sees or when.
+"""
+
+from __future__ import annotations
+
+from typing import Any, Protocol
+
+RX_MAX = 255     # bytes handed to the firmware in one exchange: their count travels as one byte
+
+
+class SteppedPlant(Protocol):
+    """What lock-step needs of a plant; `counts` are raw, in the order of lodeboard.limits.CHANNELS."""
+
+    counts: Any
+
+    def step(self, duty_a_q15: int, duty_b_q15: int, enable: int) -> Any:
+        """Advance exactly one tick under this drive."""
+        ...
+
+
+class Lockstep:
+    """Advances the plant with the drive of the tick before, and carries the link's bytes both ways.
+
+    `inputs` is what the board's input pins show (bit 0: stop input, bit 1: cut-out open); a test or
+    the virtual board's side channel sets it.
+    """
+
+    def __init__(self, plant: SteppedPlant) -> None:
+        self.plant = plant
+        self.inputs = 0
+        self.exchanges = 0
+        self._down = bytearray()
+        self._up = bytearray()
+
+    def exchange(
+        self, duty_a_q15: int, duty_b_q15: int, enable: int, tx: bytes
+    ) -> tuple[Any, bytes]:
+        """Counts after one more tick under this drive, and at most 255 bytes for the firmware.
+
+        The very first exchange only reads: no drive has been decided before it.
+        """
+        if self.exchanges:
+            self.plant.step(duty_a_q15, duty_b_q15, enable)
+        self.exchanges += 1
+        self._up += tx
+        rx = bytes(self._down[:RX_MAX])
+        del self._down[:RX_MAX]
+        return self.plant.counts, rx
+
+    def host_write(self, data: bytes) -> None:
+        """Queue bytes from the host; the firmware gets them from the next exchange on."""
+        self._down += data
+
+    def host_read(self) -> bytes:
+        """All that the firmware has sent since the last call."""
+        out = bytes(self._up)
+        self._up.clear()
+        return out
