@@ -58,6 +58,12 @@ N_FIELDS = len(FIELDS)
 INDEX = {name: i for i, name in enumerate(FIELDS)}
 BLOB_BYTES = 4 * N_FIELDS
 
+# Limits that act when a value falls to them; all others act when a value rises to them.
+LOWER_BOUNDS = (
+    INDEX["chamber_low_soft_pa"], INDEX["chamber_low_hard_pa"], INDEX["outlet_low_hard_pa"],
+    INDEX["supply_low_mv"],
+)
+
 
 class Blob:
     """Bytes that arrive in parts and count only once sealed with their length, CRC and fingerprint."""

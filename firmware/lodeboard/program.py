@@ -8,7 +8,7 @@ import struct
 from array import array
 
 from .compat import const
-from .limits import FIELDS, Blob
+from .limits import FIELDS, LOWER_BOUNDS, Blob, Limits
 
 RECORD_FORMAT = "<BBHhhi"
 RECORD_BYTES = const(12)
@@ -110,8 +110,9 @@ class Sequencer:
     start + (end - start) * k / n, rounded towards minus infinity, without leaving 30 bits.
     """
 
-    def __init__(self, program: Program) -> None:
+    def __init__(self, program: Program, limits: Limits) -> None:
         self.program = program
+        self.limits = limits
         self.loop_at = array("i", [0] * MAX_DEPTH)
         self.loop_left = array("i", [0] * MAX_DEPTH)
         self.restart()
@@ -130,9 +131,6 @@ class Sequencer:
         # set by step() for the tick to act on, one tick long
         self.cycle_mark = 0       # CYCLE or CLOSE was passed
         self.mark = -1
-        self.limit_field = -1
-        self.limit_value = 0
-        self.relaxed = False
 
     def step(self) -> int:
         """Advance one tick; RUNS, ENDED or BROKEN. Targets are in a_ma, b_ma."""
@@ -205,13 +203,19 @@ class Sequencer:
         elif op == LIMIT:
             self._tighten(i)
         elif op == RELAX:
-            self.relaxed = True
+            self.limits.relax()
         return True
 
     def _tighten(self, i: int) -> None:
-        """Leave a limit for the tick to tighten; one per tick is enough, the compiler spaces them."""
-        self.limit_field = self.program.arg[i]
-        self.limit_value = self.program.n[i]
+        """Put a step's tighter limit in force; one that would be looser than the rig's is ignored."""
+        field = self.program.arg[i]
+        value = self.program.n[i]
+        rig_value = self.limits.values[field]
+        if field in LOWER_BOUNDS:
+            if value > rig_value:
+                self.limits.active[field] = value
+        elif value < rig_value:
+            self.limits.active[field] = value
 
 
 def _share(span_ma: int, k: int, n: int) -> int:

@@ -1,0 +1,87 @@
+"""Raw counts to Pa, mA and mV in integers, and whether they can be believed.
+
+read() allocates nothing. While a channel is out of range for fewer than sensor_bad_ticks ticks, its
+last good value stands in.
+"""
+
+from array import array
+
+from . import trips
+from .limits import CHANNEL_STRIDE, INDEX, N_CHANNELS, Limits
+
+_BAD_TICKS = INDEX["sensor_bad_ticks"]
+
+
+class Sensors:
+    """values[channel] after each read(); the first implausible channel in `channel`."""
+
+    def __init__(self, hal: "object", limits: Limits) -> None:
+        self.hal = hal
+        self.limits = limits
+        self.counts = array("i", [0] * N_CHANNELS)
+        self.values = array("i", [0] * N_CHANNELS)
+        self.last = array("i", [-1] * N_CHANNELS)
+        self.bad = array("i", [0] * N_CHANNELS)
+        self.still = array("i", [0] * N_CHANNELS)
+        self.present = array("i", [0] * N_CHANNELS)
+        self.n_present = 0
+        self.channel = 0
+        self.value = 0
+        self.limit = 0
+
+    def load(self) -> None:
+        """Take which channels are there; those that are not stay at their stated value."""
+        v = self.limits.values
+        self.n_present = 0
+        for channel in range(N_CHANNELS):
+            base = channel * CHANNEL_STRIDE
+            self.values[channel] = v[base + 3]
+            self.last[channel] = -1
+            self.bad[channel] = 0
+            self.still[channel] = 0
+            if v[base]:
+                self.present[self.n_present] = channel
+                self.n_present += 1
+
+    def read(self) -> int:
+        """Read, convert, check; a trip code or 0. The order of channels decides which is first."""
+        counts = self.counts
+        self.hal.read_counts(counts)  # type: ignore[attr-defined]
+        v = self.limits.values
+        bad_ticks = v[_BAD_TICKS]
+        found = 0
+        for j in range(self.n_present):
+            channel = self.present[j]
+            base = channel * CHANNEL_STRIDE
+            raw = counts[channel]
+            if raw < v[base + 4] or raw > v[base + 5]:
+                self.bad[channel] += 1
+                if found == 0 and self.bad[channel] >= bad_ticks:
+                    limit = v[base + 4] if raw < v[base + 4] else v[base + 5]
+                    found = self._implausible(trips.SENSOR_RANGE, channel, raw, limit)
+                continue
+            self.bad[channel] = 0
+            value = ((raw * v[base + 1]) >> v[base + 2]) + v[base + 3]
+            if v[base + 6]:
+                if raw != self.last[channel]:
+                    self.still[channel] = 0
+                else:
+                    self.still[channel] += 1
+                    if found == 0 and self.still[channel] >= v[base + 6]:
+                        found = self._implausible(trips.SENSOR_STUCK, channel, raw, v[base + 6])
+            if v[base + 7] and self.last[channel] >= 0:
+                moved = value - self.values[channel]
+                if moved < 0:
+                    moved = -moved
+                if found == 0 and moved >= v[base + 7]:
+                    found = self._implausible(trips.SENSOR_JUMP, channel, moved, v[base + 7])
+            self.last[channel] = raw
+            self.values[channel] = value
+        return found
+
+    def _implausible(self, code: int, channel: int, value: int, limit: int) -> int:
+        """Keep the first-out channel with its value and limit."""
+        self.channel = channel
+        self.value = value
+        self.limit = limit
+        return code
