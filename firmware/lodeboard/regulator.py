@@ -16,6 +16,7 @@ class Regulator:
         self.duty_max_q15 = 0
         self.integral_q8 = 0
         self.duty_q15 = 0
+        self.target_ma = 0        # as last stepped: what the coil should carry by now
 
     def load(self, limits: "object") -> None:
         """Take gains and clamps."""
@@ -31,9 +32,11 @@ class Regulator:
         """Forget the integral: the output is off."""
         self.integral_q8 = 0
         self.duty_q15 = 0
+        self.target_ma = 0
 
     def step(self, target_ma: int, current_ma: int) -> int:
         """The duty for this tick."""
+        self.target_ma = target_ma
         if target_ma == 0 and self.duty_min_q15 == 0:
             # a half bridge cannot pull current down: off is the fastest way to zero
             self.integral_q8 = 0

@@ -79,6 +79,13 @@ class Sensors:
             self.values[channel] = value
         return found
 
+    def any_bad(self) -> bool:
+        """Whether any channel that is there was out of range in the last read."""
+        for channel in range(N_CHANNELS):
+            if self.bad[channel]:
+                return True
+        return False
+
     def _implausible(self, code: int, channel: int, value: int, limit: int) -> int:
         """Keep the first-out channel with its value and limit."""
         self.channel = channel
