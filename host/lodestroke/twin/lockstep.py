@@ -8,7 +8,7 @@ from __future__ import annotations
 
 from typing import Any, Protocol
 
-RX_MAX = 255     # bytes handed to the firmware in one exchange: their count travels as one byte
+RX_MAX = 32      # bytes for the firmware per exchange: what its link takes in one tick
 
 
 class SteppedPlant(Protocol):
@@ -38,7 +38,7 @@ class Lockstep:
     def exchange(
         self, duty_a_q15: int, duty_b_q15: int, enable: int, tx: bytes
     ) -> tuple[Any, bytes]:
-        """Counts after one more tick under this drive, and at most 255 bytes for the firmware.
+        """Counts after one more tick under this drive, and at most RX_MAX bytes for the firmware.
 
         The very first exchange only reads: no drive has been decided before it.
         """
