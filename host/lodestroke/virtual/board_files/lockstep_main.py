@@ -8,5 +8,7 @@ import hal_virtual
 from lodeboard.board import Board
 from lodeboard.loop import Loop
 
-Loop(Board(hal_virtual.open_hal({}), unhexlify(os.getenv("LODESTROKE_BUNDLE") or "00" * 8))).run()
+board = Board(hal_virtual.open_hal({}), unhexlify(os.getenv("LODESTROKE_BUNDLE") or "00" * 8))
+board.boot()
+Loop(board).run()
 sys.exit(0)
