@@ -57,16 +57,19 @@ def board_files() -> Path:
 
 
 class Interpreter:
-    """One launch: from power-up to exit, with its pipes."""
+    """One launch: from power-up to exit, with its pipes.
+
+    prompt: stdin is a terminal of its own, and the REPL follows when start.py ends.
+    """
 
     def __init__(
         self, stdin: int, stdout: int, environment: dict[str, str], heap_kib: int, home: Path,
-        terminal: bool = True,
+        prompt: bool = True,
     ) -> None:
         self.channel = Channel()
         command = [
             interpreter_path(), "-X", "heapsize=" + _HEAP.format(kib=heap_kib),
-            "-i", str(board_files() / "start.py"),
+            *(["-i"] if prompt else []), str(board_files() / "start.py"),
         ]
         keep = {k: v for k, v in os.environ.items() if k in ("PATH", "LANG", "VIRTUAL_ENV")}
         self.process = subprocess.Popen(
@@ -76,7 +79,7 @@ class Interpreter:
                 **environment, **self.channel.environment(),
             },
             pass_fds=self.channel.child_fds(),
-            preexec_fn=_own_terminal if terminal else None,
+            preexec_fn=_own_terminal if prompt else None,
         )
         self.channel.launched()
 

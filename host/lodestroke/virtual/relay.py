@@ -204,7 +204,8 @@ class Relay:
             self._from_inner()
             self._owned = request.kind == channel.OWN
         elif request.kind == channel.RESET:
-            self._cause = "reset"
+            self.cut("reset")
+            return
         elif request.kind == channel.GUARD:
             self.guard.start(request.duty_a, request.duty_b)
         self.board.channel.answer()
