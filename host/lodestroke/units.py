@@ -16,7 +16,7 @@ from typing import TYPE_CHECKING, Annotated, Any
 
 if TYPE_CHECKING:
     from pint import UnitRegistry
-    from pydantic import GetCoreSchemaHandler
+    from pydantic import GetCoreSchemaHandler, ValidationInfo
     from pydantic_core import CoreSchema
 
 # SI unit of a quantity: what to call it, and units that people write for it (used in errors).
@@ -50,6 +50,7 @@ _NUMBER = re.compile(r"\s*([-+]?(?:\d+(?:\.\d*)?|\.\d+)(?:[eE][-+]?\d{1,4})?)\s*
 _FACTOR = re.compile(r"(1|%|[A-Za-zµμΩ°_][A-Za-zµμΩ°_0-9]*)(?:(?:\^|\*\*)([-+]?\d))?")
 _SUPERSCRIPTS = {"²": "^2", "³": "^3", "⁻¹": "^-1", "·": "*", "×": "*", "−": "-", "μ": "µ"}
 _TEXT_MAX = 60
+IN_FILE = "file"         # validation context: quantities are text with units
 
 
 class UnitError(ValueError):
@@ -230,7 +231,10 @@ def show(value: float, unit: str) -> str:
 
 @dataclass(frozen=True)
 class Unit:
-    """Field metadata: the field is a quantity, written as text with a unit, kept as an SI float."""
+    """Field metadata: the field is a quantity, written as text with a unit, kept as an SI float.
+
+    In a file (validation context IN_FILE) a number needs its unit; Python code may give SI numbers.
+    """
 
     si: str
 
@@ -239,9 +243,12 @@ class Unit:
     ) -> CoreSchema:
         from pydantic_core import core_schema  # noqa: PLC0415  (only models need it)
 
-        return core_schema.no_info_before_validator_function(
-            lambda text: parse(text, self.si), handler(source)
-        )
+        return core_schema.with_info_before_validator_function(self._read, handler(source))
+
+    def _read(self, value: object, info: ValidationInfo) -> object:
+        if info.context != IN_FILE and isinstance(value, int | float) and not isinstance(value, bool):
+            return _finite(float(value), KNOWN[self.si][0])
+        return parse(value, self.si)
 
 
 Pressure = Annotated[float, Unit("Pa")]

@@ -16,7 +16,7 @@ from pydantic import BaseModel, ConfigDict, TypeAdapter, ValidationError
 from pydantic_core import ErrorDetails
 
 from ..errors import LodestrokeError
-from ..units import KNOWN, Unit, UnitError
+from ..units import IN_FILE, KNOWN, Unit, UnitError
 from .locate import Path, lines_of
 from .problems import Problem, fail, key_text, value_at
 
@@ -124,7 +124,7 @@ def read_fields(model: type[BaseModel], document: Document) -> dict[str, Any]:
         adapter: TypeAdapter[Any] = TypeAdapter(
             _annotated(info.annotation, info.metadata))
         try:
-            good[name] = adapter.validate_python(document.data[name])
+            good[name] = adapter.validate_python(document.data[name], context=IN_FILE)
         except ValidationError as err:
             document.problems.extend(_problem(name, model, e, document.data) for e in err.errors())
     return good
