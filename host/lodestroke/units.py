@@ -46,7 +46,8 @@ KNOWN: dict[str, tuple[str, tuple[str, ...]]] = {
     "": ("plain number", ("%",)),
 }
 
-_NUMBER = re.compile(r"\s*([-+]?(?:\d+(?:\.\d*)?|\.\d+)(?:[eE][-+]?\d{1,4})?)\s*(.*?)\s*", re.DOTALL)
+_NUMBER = re.compile(
+    r"\s*([-+]?(?:\d+(?:\.\d*)?|\.\d+)(?:[eE][-+]?\d{1,4})?)\s*(.*?)\s*", re.DOTALL | re.ASCII)
 _FACTOR = re.compile(r"(1|%|[A-Za-zµμΩ°_][A-Za-zµμΩ°_0-9]*)(?:(?:\^|\*\*)([-+]?\d))?")
 _SUPERSCRIPTS = {"²": "^2", "³": "^3", "⁻¹": "^-1", "·": "*", "×": "*", "−": "-", "μ": "µ"}
 _TEXT_MAX = 60
@@ -54,7 +55,7 @@ IN_FILE = "file"         # validation context: quantities are text with units
 
 
 class UnitError(ValueError):
-    """Text that is not the quantity asked for; `bound` and `try_` are parts of the five-part error."""
+    """Text that is not the quantity asked for; `bound` and `try_` are parts of the error told."""
 
     def __init__(self, what: str, *, bound: str = "", try_: str = "") -> None:
         super().__init__(what)
@@ -113,13 +114,15 @@ def _named_factor(ureg: UnitRegistry[Any], name: str) -> tuple[float, dict[str, 
         name = "delta_" + name
     try:
         unit = ureg.parse_units(name)
-        factor, _ = ureg.get_base_units(unit)
-        dims = {str(dim): float(power) for dim, power in unit.dimensionality.items()}
+        one: Any = ureg.get_base_units(unit)[0]
+        powers: dict[Any, Any] = dict(unit.dimensionality)
+        factor = float(one)
+        dims = {str(dim): float(power) for dim, power in powers.items()}
     except Exception as err:  # pint raises many kinds; all of them mean "not a unit"
         near = difflib.get_close_matches(name.lower(), _lower_names(), n=1, cutoff=0.6)
         hint = f'did you mean "{_lower_names()[near[0]]}"?' if near else "see the shipped rig files"
         raise UnitError(f'unknown unit "{name}"', try_=hint) from err
-    return float(factor), dims
+    return factor, dims
 
 
 @functools.cache
@@ -246,8 +249,9 @@ class Unit:
         return core_schema.with_info_before_validator_function(self._read, handler(source))
 
     def _read(self, value: object, info: ValidationInfo) -> object:
-        if info.context != IN_FILE and isinstance(value, int | float) and not isinstance(value, bool):
-            return _finite(float(value), KNOWN[self.si][0])
+        number = isinstance(value, int | float) and not isinstance(value, bool)
+        if info.context != IN_FILE and number:
+            return _finite(float(value), KNOWN[self.si][0])  # type: ignore[arg-type]
         return parse(value, self.si)
 
 

@@ -15,7 +15,7 @@ _K = 2.0                 # coverage factor of stated uncertainties (GUM, about 9
 
 
 def sensor_table(rig: Rig) -> dict[str, dict[str, float]]:
-    """Per wired sensor: resolution, noise and uncertainty in SI, and counts of its smallest limit."""
+    """Per wired sensor: resolution, noise, uncertainty in SI, and counts of its smallest limit."""
     table = {}
     for name in type(rig.sensors).model_fields:
         sensor = getattr(rig.sensors, name)
@@ -24,8 +24,9 @@ def sensor_table(rig: Rig) -> dict[str, dict[str, float]]:
         scale = 1.0 if isinstance(sensor, PressureSensor) else 1000.0
         resolution = per_count(sensor, name) / scale
         table[name] = {
-            "resolution": resolution, "noise": sensor.noise, "uncertainty_k2": _K * sensor.uncertainty,
-            "lag_s": sensor.lag, "low": sensor.low, "high": sensor.high,
+            "resolution": resolution, "noise": sensor.noise,
+            "uncertainty_k2": _K * sensor.uncertainty, "lag_s": sensor.lag,
+            "low": sensor.low, "high": sensor.high,
             "counts_of_smallest_limit": _smallest(rig, name) / resolution,
         }
     return table
@@ -87,7 +88,7 @@ def interlock_margins(rig: Rig, push_pa: float) -> list[dict[str, Any]]:
 
 
 def _back_pa(rig: Rig) -> float:
-    """What can pull the chamber below the outlet: the spring at full stroke and the outlet's limit."""
+    """What can pull the chamber below the outlet: spring at full stroke, and outlet's limit."""
     area = rig.channel.area_m2
     volume = (rig.spring.volume or 0.0) if rig.spring.kind == "air" else 0.0
     pull = -air_spring(rig.slug.travel / 2, area, volume, rig.ambient.pressure, 1.0)

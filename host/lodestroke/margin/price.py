@@ -96,7 +96,9 @@ def _greatest_steady(coil: Coil, ambient_c: float, limit_c: float) -> float:
     return math.sqrt((limit_c - ambient_c) / (rth * hot_resistance(coil, limit_c)))
 
 
-def _time_to(node: TwoNode, coil: Coil, current_a: float, ambient_c: float, limit_c: float) -> float:
+def _time_to(
+    node: TwoNode, coil: Coil, current_a: float, ambient_c: float, limit_c: float
+) -> float:
     """Seconds from ambient to the limit under full current, resistance as at the limit (early)."""
     power = current_a**2 * hot_resistance(coil, limit_c)
     if ambient_c + node.steady(power)[0] <= limit_c:

@@ -20,7 +20,7 @@ _PLACES = 200
 
 
 def prove_static(program: Program, rig: Rig) -> dict[str, Any]:
-    """Numbers of a compiled program beside their bounds. It has passed them all, or there is no program.
+    """Numbers of a compiled program beside their bounds, all of which it has passed.
 
     `pressure_bound_pa` is the greatest magnetic pressure that the program's current can put across
     the slug: no chamber pressure can exceed it statically.

@@ -1,4 +1,4 @@
-"""The rig: what is wired on one bench, read from one TOML file, and the limits that its board gets."""
+"""The rig: what is wired on one bench, read from TOML, and the limits that its board gets."""
 
 from .limits_blob import limits_blob, limits_values
 from .load import load_rig

@@ -39,11 +39,11 @@ def rig_problems(good: dict[str, Any]) -> list[Problem]:
 
 
 def _order(
-    path: tuple[str | int, ...], low: float, high: float, unit: str, what: str, word: str
+    path: tuple[str | int, ...], low: float, high: float, unit: str, what: str
 ) -> Iterator[Problem]:
     """low must be below high; the problem is told at `path`."""
     if not low < high:
-        yield Problem(path, what, bound=f"{word} {show(high, unit)}",
+        yield Problem(path, what, bound=f"below {show(high, unit)}",
                       try_="swap the values or mend one of them")
 
 
@@ -127,7 +127,8 @@ def _channel(channel: Channel) -> Iterator[Problem]:
     for name in ("radius", "width", "height"):
         given = getattr(channel, name) is not None
         if name in needed and not given:
-            yield Problem(("channel", name), "missing", f'shape "{channel.shape}" needs it', "add it")
+            yield Problem(("channel", name), "missing", f'shape "{channel.shape}" needs it',
+                          "add it")
         if given and name not in needed:
             yield Problem(("channel", name), f'means nothing for shape "{channel.shape}"',
                           "only " + " and ".join(needed), "remove it")
@@ -155,7 +156,7 @@ def _spring(spring: Spring, coils: list[Coil], slug: Slug, channel: Channel) -> 
     if spring.volume is None:
         yield Problem(("spring", "volume"), "missing", "an air spring has a volume", "add it")
     elif channel.area_m2 and spring.volume <= channel.area_m2 * slug.travel / 2:
-        yield Problem(("spring", "volume"), "the slug's stroke sweeps more than the air spring holds",
+        yield Problem(("spring", "volume"), "the stroke sweeps more than the air spring holds",
                       f"above {show(channel.area_m2 * slug.travel / 2, 'm^3')}",
                       "a larger volume or a shorter travel")
 
@@ -166,7 +167,7 @@ def _valves(valves: Valves) -> Iterator[Problem]:
         for i, valve in enumerate(row):
             path = ("valves", side, i)
             yield from _order((*path, "closing"), valve.closing, valve.cracking, "Pa",
-                              "the valve closes above its cracking pressure", "below")
+                              "the valve closes above its cracking pressure")
             if valve.collapse <= valve.cracking:
                 yield Problem((*path, "collapse"), "the valve collapses before it cracks",
                               f"above cracking, {show(valve.cracking, 'Pa')}",
@@ -182,20 +183,20 @@ def _soft_before_hard(limits: Limits) -> Iterator[Problem]:
     for name in ("outlet_reverse", "inlet_reverse", "chamber_high", "outlet_high"):
         pair = getattr(limits, name)
         yield from _order(("limits", name, "soft"), pair.soft, pair.hard, "Pa",
-                          "soft level is not below the hard one", "below")
+                          "soft level is not below the hard one")
     low = limits.chamber_low
     if not low.soft > low.hard:
         yield Problem(("limits", "chamber_low", "soft"), "soft level is not above the hard one",
                       f"above {show(low.hard, 'Pa')}", "swap the values or mend one of them")
     heat = limits.coil_temperature
     yield from _order(("limits", "coil_temperature", "soft"), heat.soft, heat.hard, "degC",
-                      "soft level is not below the hard one", "below")
+                      "soft level is not below the hard one")
     yield from _order(("limits", "current"), limits.current, limits.over_current, "A",
-                      "greatest target is not below the over-current level", "below")
+                      "greatest target is not below the over-current level")
     yield from _order(("limits", "chamber_low", "hard"), low.hard, limits.chamber_high.soft, "Pa",
-                      "chamber's low level is not below its high one", "below")
+                      "chamber's low level is not below its high one")
     yield from _order(("limits", "outlet_low"), limits.outlet_low, limits.outlet_high.soft, "Pa",
-                      "outlet's low level is not below its high one", "below")
+                      "outlet's low level is not below its high one")
 
 
 @check("limits", "board")
@@ -208,7 +209,7 @@ def _limit_times(limits: Limits, board: Board) -> Iterator[Problem]:
 @check("limits", "ambient")
 def _limit_heat(limits: Limits, ambient: Any) -> Iterator[Problem]:
     if limits.coil_temperature.soft <= ambient.temperature:
-        yield Problem(("limits", "coil_temperature", "soft"), "the coil is too hot before it starts",
+        yield Problem(("limits", "coil_temperature", "soft"), "the coil is hot before it starts",
                       f"above the room, {ambient.temperature:g} degC", "raise the limit")
 
 
@@ -218,7 +219,7 @@ def _reverse_before_collapse(limits: Limits, valves: Valves) -> Iterator[Problem
         least = min(valve.collapse for valve in row)
         pair = getattr(limits, f"{side}_reverse")
         yield from _order(("limits", f"{side}_reverse", "hard"), pair.hard, least, "Pa",
-                          f"the trip comes after the {side} valve's collapse", "below")
+                          f"the trip comes after the {side} valve's collapse")
 
 
 @check("limits", "inlet", "outlet")

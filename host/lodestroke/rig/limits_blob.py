@@ -19,7 +19,7 @@ from .models_sensors import Sensor
 from .problems import key_text
 
 SMALL = 1 << 30
-_SPARE = 0.025           # readings may leave the calibrated span by this share before they are wrong
+_SPARE = 0.025           # readings may leave the calibrated span by this share
 _STUCK_TICKS = 200       # with noise of half a count or more, no honest sensor stands still so long
 
 

@@ -57,7 +57,7 @@ class Rig(Table):
 
     @property
     def fingerprint(self) -> bytes:
-        """First 8 bytes of the SHA-256 of the canonical JSON: ties limits on a board to this rig."""
+        """First 8 bytes of the SHA-256 of the canonical JSON: ties a board's limits to this rig."""
         return hashlib.sha256(self.canonical_json().encode()).digest()[:8]
 
     @property

@@ -1,4 +1,4 @@
-"""The pump itself: coils, slug, channel, return spring, valves, vessels, liquid and surroundings."""
+"""The pump itself: coils, slug, channel, return spring, valves, vessels, liquid, room."""
 
 from __future__ import annotations
 
@@ -36,7 +36,7 @@ _Creep = Annotated[Ratio, Ge(-1e-2), Le(1e-2)]
 
 
 class Coil(Table):
-    """A solenoid around the channel. Resistance is at 20 degC; copper unless alpha says otherwise."""
+    """A solenoid around the channel. Resistance is at 20 degC; the coefficient is copper's."""
 
     name: Text = ""
     turns: Annotated[int, Ge(1), Le(1_000_000)]
@@ -127,7 +127,7 @@ class Ambient(Table):
 
 
 class Valve(Table):
-    """A plug of magnetic liquid held by a magnet: closed below cracking, blown out past collapse."""
+    """A plug of magnetic liquid held by a magnet: closed below cracking, blown past collapse."""
 
     cracking: Annotated[Pressure, Gt(0.0), Le(1e6)]
     closing: Annotated[Pressure, Ge(0.0), Le(1e6)]

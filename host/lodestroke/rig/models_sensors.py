@@ -28,7 +28,7 @@ class Sensor(Table):
 
 
 class PressureSensor(Sensor):
-    """Gauge pressure. `uncertainty` is the standard uncertainty (k = 1) of one calibrated reading."""
+    """Gauge pressure. `uncertainty` is standard (k = 1), of one calibrated reading."""
 
     kind: Literal["pressure"] = "pressure"
     low: Annotated[Pressure, Ge(-1e6), Le(1e6)]

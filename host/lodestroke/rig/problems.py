@@ -1,4 +1,4 @@
-"""Everything that is wrong with a file, gathered and told at once: line, key, value, bound, advice."""
+"""Everything that is wrong with a file, told at once: line, key, value, bound, advice."""
 
 from __future__ import annotations
 
@@ -58,7 +58,8 @@ def shown(value: Any) -> str:
     if isinstance(value, int) and value.bit_length() > 128:
         return "a huge number"
     text = f'"{value}"' if isinstance(value, str) else str(value)
-    text = text.encode("unicode_escape", "replace").decode("ascii") if not text.isprintable() else text
+    if not text.isprintable():
+        text = text.encode("unicode_escape", "replace").decode("ascii")
     return text if len(text) <= 60 else text[:57] + "..."
 
 

@@ -10,7 +10,7 @@ import sys
 from collections.abc import Callable
 from dataclasses import dataclass, field
 from pathlib import Path as FilePath
-from typing import Any
+from typing import Annotated, Any
 
 from pydantic import BaseModel, ConfigDict, TypeAdapter, ValidationError
 from pydantic_core import ErrorDetails
@@ -131,9 +131,9 @@ def read_fields(model: type[BaseModel], document: Document) -> dict[str, Any]:
 
 
 def _annotated(annotation: Any, metadata: list[Any]) -> Any:
-    from typing import Annotated  # noqa: PLC0415
-
-    return Annotated[(annotation, *metadata)] if metadata else annotation  # type: ignore[return-value]
+    """A field's type with its metadata, as it was written in the model."""
+    parts = (annotation, *metadata)
+    return Annotated.__class_getitem__(parts) if metadata else annotation  # type: ignore[attr-defined]
 
 
 def _problem(name: str, model: type[BaseModel], error: ErrorDetails, data: Any) -> Problem:
@@ -177,7 +177,7 @@ def _shape(kind: str) -> str:
 
 
 def _words(ctx: dict[str, Any]) -> list[str]:
-    return [w for w in str(ctx.get("expected", "")).replace(" or ", ", ").replace("'", "").split(", ")]
+    return str(ctx.get("expected", "")).replace(" or ", ", ").replace("'", "").split(", ")
 
 
 def _real_path(loc: tuple[str | int, ...], data: Any, kind: str) -> Path:

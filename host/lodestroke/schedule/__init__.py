@@ -5,4 +5,7 @@ from .compile import Program, compile_program
 from .load import load_plan, load_schedule
 from .models import Plan, Schedule
 
-__all__ = ["Plan", "Program", "Schedule", "checkup_schedule", "compile_program", "load_plan", "load_schedule"]
+__all__ = [
+    "Plan", "Program", "Schedule", "checkup_schedule", "compile_program", "load_plan",
+    "load_schedule",
+]

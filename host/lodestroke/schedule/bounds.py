@@ -6,6 +6,7 @@ import math
 from typing import TYPE_CHECKING
 
 from lodeboard import program as board
+from lodeboard.limits import FIELDS
 
 from ..errors import ScheduleError
 from ..rig.limits_blob import per_count
@@ -116,13 +117,13 @@ def _judge_segments(program: Program, rig: Rig) -> None:
     for op, arg, step, a, b, n in program.rows():
         if op == board.RELAX:
             limit = full
-        elif op == board.LIMIT and board.FIELDS[arg] == "target_max_ma":
+        elif op == board.LIMIT and FIELDS[arg] == "target_max_ma":
             limit = n
         elif op == board.SEG:
             for coil, (start, end) in enumerate(((now[0], a), (now[1], b))):
                 place = program.places[step] + (", second coil" if coil else "")
                 _judge_current(end, limit, rig, coil, place)
-                _judge_slew(start, end, n, rig, coil, place)
+                _judge_slew((start, end), n, rig, coil, place)
             now = [a, b]
 
 
@@ -159,14 +160,15 @@ def slew_time(start: float, end: float, rig: Rig, coil: int) -> float:
     return math.inf if left <= 0.0 else tau * math.log(head / left)
 
 
-def _judge_slew(start: int, end: int, ticks: int, rig: Rig, coil: int, place: str) -> None:
+def _judge_slew(edge: tuple[int, int], ticks: int, rig: Rig, coil: int, place: str) -> None:
+    start, end = edge
     if start == end:
         return
     least = slew_time(start / 1000, end / 1000, rig, coil)
     if not math.isfinite(least):
         raise ScheduleError("the supply cannot drive this current", at=place,
                             got=show(end / 1000, "A"),
-                            bound=f"{show(rig.driver.supply * rig.driver.duty_max, 'V')} at the coil",
+                            bound=f"{show(rig.driver.supply * rig.driver.duty_max, 'V')} available",
                             try_="a lower current")
     if ticks * rig.board.tick < least:
         raise ScheduleError(

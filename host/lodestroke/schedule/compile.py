@@ -8,12 +8,14 @@ current may be left over from a ramp or a hold, the next step of strokes or rest
 from __future__ import annotations
 
 import binascii
+import itertools
 import math
 import struct
 from dataclasses import dataclass, field
 from typing import Any
 
 from lodeboard import program as board
+from lodeboard.limits import FIELDS
 
 from ..errors import ScheduleError
 from ..rig.models import Rig
@@ -207,7 +209,7 @@ class _Compiler:
             self._emit(board.SEG, number, a=a, b=b, n=self._ticks(DOWN_S))
         self._open(times, number)
         self._emit(board.CYCLE, number)
-        for (start, _, _), (end, a_ma, b_ma) in zip(row, row[1:], strict=False):
+        for (start, _, _), (end, a_ma, b_ma) in itertools.pairwise(row):
             self._emit(board.SEG, number, a=a_ma, b=b_ma, n=end - start)
         self.cycles += self.times
         self._close(times, number)
@@ -230,7 +232,7 @@ class _Compiler:
 
     def _emit_limits(self, number: int, tight: Tight) -> None:
         for name, value in tight.items():
-            self._emit(board.LIMIT, number, arg=board.FIELDS.index(name), n=value)
+            self._emit(board.LIMIT, number, arg=FIELDS.index(name), n=value)
 
 
 def _ma(amperes: float) -> int:

@@ -9,7 +9,9 @@ from __future__ import annotations
 from dataclasses import dataclass, field
 
 import numpy as np
+
 from lodeboard import program as board
+from lodeboard.limits import FIELDS
 
 from ..errors import ScheduleError
 from .compile import Program
@@ -35,7 +37,7 @@ class Expanded:
 
 
 def expand(program: Program) -> Expanded:
-    """Run the records. Raises ScheduleError for one too long to lay out, ValueError for nonsense."""
+    """Run the records. Raises ScheduleError when too long to lay out, ValueError for nonsense."""
     if program.ticks > _TICKS_MAX:
         raise ScheduleError("too long to lay out tick by tick", at=program.title,
                             got=f"{program.ticks} ticks", bound=f"at most {_TICKS_MAX}",
@@ -46,7 +48,8 @@ def expand(program: Program) -> Expanded:
 class _Reader:
     def __init__(self, program: Program) -> None:
         self.rows = program.rows()
-        self.out = Expanded(*(np.zeros(program.ticks, np.int32) for _ in range(3)))
+        self.out = Expanded(np.zeros(program.ticks, np.int32), np.zeros(program.ticks, np.int32),
+                            np.zeros(program.ticks, np.int32))
         self.tick = 0
         self.now = (0, 0)
         self.cycle_open = False
@@ -81,7 +84,7 @@ class _Reader:
             elif op == board.MARK:
                 self.out.marks.append((self.tick, n))
             elif op == board.LIMIT:
-                self.out.limits.append((self.tick, board.FIELDS[arg], n))
+                self.out.limits.append((self.tick, FIELDS[arg], n))
             elif op == board.RELAX:
                 self.out.relaxed.append(self.tick)
             else:

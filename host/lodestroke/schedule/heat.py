@@ -10,6 +10,7 @@ from collections.abc import Sequence
 from dataclasses import dataclass, field
 
 import numpy as np
+
 from lodeboard import program as board
 
 from ..rig.models_pump import Coil
@@ -96,7 +97,7 @@ class HeatBound:
         self.cache: dict[int, np.ndarray] = {}
 
     def run(self, state: np.ndarray | None = None) -> float:
-        """Peak winding temperature above ambient, in kelvin, starting cold unless told otherwise."""
+        """Peak winding temperature above ambient, in kelvin, starting cold unless told."""
         if state is not None:
             self.state = state
         self._range(0, len(self.rows))

@@ -1,4 +1,4 @@
-"""Limits that a step tightens: as the board's limit fields, checked against what holds around it."""
+"""Limits that a step tightens, as the board's fields, checked against what holds around it."""
 
 from __future__ import annotations
 
@@ -12,7 +12,7 @@ from .models import StepLimits
 
 Tight = dict[str, int]       # limit field -> value in board units
 
-# step key -> (hard field, soft field, board units per SI unit, SI unit, +1 high level / -1 low level)
+# step key -> (hard field, soft field, board units per SI unit, SI unit, +1 high or -1 low level)
 _FIELDS: dict[str, tuple[str, str, float, str, int]] = {
     "outlet_reverse": ("outlet_reverse_hard_pa", "outlet_reverse_soft_pa", 1, "Pa", 1),
     "inlet_reverse": ("inlet_reverse_hard_pa", "inlet_reverse_soft_pa", 1, "Pa", 1),

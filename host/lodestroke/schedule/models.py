@@ -21,7 +21,7 @@ _Mark = Annotated[int, Ge(0), Le(65535)]
 
 
 class CoilB(Table):
-    """What the second coil does during a wave: the same shape, its own current, later by a phase."""
+    """What the second coil does during a wave: the same shape, own current, later by a phase."""
 
     current: _Amps | None = None
     phase: Annotated[Angle, Ge(0.0), Lt(360.0)] = 0.0
@@ -30,7 +30,7 @@ class CoilB(Table):
 class WaveValues(Table):
     """A wave's values, all optional: a step may set some anew.
 
-    Either rise, hold, fall and rest; or rate and duty (the share of a period that is rise and hold).
+    Either rise, hold, fall and rest; or rate and duty (share of a period that is rise and hold).
     """
 
     current: _Amps | None = None
@@ -44,7 +44,7 @@ class WaveValues(Table):
 
 
 class StepLimits(Table):
-    """Limits tighter than the rig's while a step runs. Pressures are hard levels, soft ones follow."""
+    """Limits tighter than the rig's while a step runs. These are hard levels, soft ones follow."""
 
     outlet_reverse: Annotated[Pressure, Gt(0.0)] | None = None
     inlet_reverse: Annotated[Pressure, Gt(0.0)] | None = None
@@ -151,10 +151,10 @@ class Schedule(Table):
     """What the coils shall do over time."""
 
     title: Text = ""
-    waves: dict[str, WaveValues] = {}
+    waves: dict[str, WaveValues] = Field(default_factory=dict)
     steps: Annotated[list[Step], Len(1, 250)]
     source: Annotated[Path, Field(exclude=True)] = Path()
-    lines: Annotated[dict[tuple[str | int, ...], int], Field(exclude=True)] = {}
+    lines: dict[tuple[str | int, ...], int] = Field(default_factory=dict, exclude=True)
 
     @property
     def cycles_per_pass(self) -> int:
