@@ -106,7 +106,9 @@ class Board:
         self._load()
         if self.sensors.read() or self.sensors.any_bad():
             return messages.NOT_PLAUSIBLE
-        self.hal.start_guards()  # type: ignore[attr-defined]
+        guarded = self.hal.start_guards()  # type: ignore[attr-defined]
+        if not guarded and self.limits.get("deadman_needed"):
+            return messages.NO_DEADMAN
         self.live = False
         self.move("arm")
         collect()
