@@ -6,7 +6,7 @@ MASK_US = const(0x3FFFFFFF)
 _SIGN_US = const(0x20000000)
 
 
-def us_since(now_us, then_us):
+def us_since(now_us: int, then_us: int) -> int:
     """Signed microseconds between two 30-bit device times; right within plus or minus 536 s.
 
     Both operands must already be masked. A plain "add half, mask, subtract half" leaves the small
@@ -15,7 +15,7 @@ def us_since(now_us, then_us):
     return (((now_us - then_us) & 0x3FFFFFFF) ^ 0x20000000) - 0x20000000
 
 
-def us_after(then_us, span_us):
+def us_after(then_us: int, span_us: int) -> int:
     """The device time span_us (0 to 2**29) after then_us, without leaving 30 bits on the way."""
     left_us = MASK_US - then_us
     if span_us > left_us:
