@@ -103,7 +103,7 @@ def _sum(path, buffer):
 
 
 def damaged(slot):
-    """Names of files that are not what the package's manifest says; ["manifest.json"] without one."""
+    """Files that are not what the package's manifest says; ["manifest.json"] without one."""
     try:
         with open("/" + slot + "/manifest.json") as file:
             wanted = json.load(file)["files"]
@@ -114,7 +114,7 @@ def damaged(slot):
 
 
 def start():
-    """Run the package that the pointer names, or the one before it; returns when the prompt is due."""
+    """Run the package that the pointer names, or the one before it; returns for the prompt."""
     row = read()
     if row is None:
         print("Lodestroke: no firmware installed")

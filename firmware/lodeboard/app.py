@@ -9,17 +9,22 @@ from binascii import unhexlify
 from . import states
 from .board import Board
 from .compat import const
+from .hal import Hal
 from .loop import Loop
+
+TYPE_CHECKING = False
+if TYPE_CHECKING:
+    from collections.abc import Callable
 
 _PROVING_TICKS = const(1000)
 
 
-def open_hal(folder):
+def open_hal(folder: str) -> Hal:
     """The Hal named by board.json, with its pins."""
     with open(folder + "/board.json") as file:
         config = json.load(file)
     module = __import__(config["hal"], None, None, ("open_hal",))
-    return module.open_hal(config)
+    return module.open_hal(config)  # type: ignore[no-any-return]
 
 
 class ProvingLoop(Loop):
@@ -28,23 +33,23 @@ class ProvingLoop(Loop):
     `prove` writes to flash, which stops everything for a while: never while armed.
     """
 
-    def __init__(self, board, prove):
+    def __init__(self, board: Board, prove: "Callable[[], None]") -> None:
         Loop.__init__(self, board)
-        self.prove = prove
+        self.prove: "Callable[[], None] | None" = prove
         self.left = _PROVING_TICKS
 
-    def step(self):
+    def step(self) -> None:
         Loop.step(self)
         if self.left:
             self.left -= 1
         elif self.prove is not None and not self.board.locked:
-            if self.board.state == states.SAFE or self.board.state == states.TRIPPED:
+            if self.board.state in (states.SAFE, states.TRIPPED):
                 prove = self.prove
                 self.prove = None
                 prove()
 
 
-def run(folder, prove):
+def run(folder: str, prove: "Callable[[], None]") -> None:
     """Run until the port is given back. A fault after a good second restarts the board, tripped;
     one before that is raised, so that the slot before this one gets its turn.
     """

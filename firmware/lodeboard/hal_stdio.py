@@ -17,7 +17,7 @@ _ETX = 3
 class StdioHal(Hal):
     """Owns the port while the firmware runs; 0x03 is data then."""
 
-    def __init__(self):
+    def __init__(self) -> None:
         self.stdin = sys.stdin.buffer
         self.stdout = sys.stdout.buffer
         self.one = bytearray(1)
@@ -31,7 +31,7 @@ class StdioHal(Hal):
         for _ in self.can_write.ipoll(0):
             pass
 
-    def read_byte(self):
+    def read_byte(self) -> int:
         if self.held:
             return -1
         for _ in self.can_read.ipoll(0):
@@ -44,13 +44,13 @@ class StdioHal(Hal):
             return octet
         return -1
 
-    def write(self, view, n):
+    def write(self, view: memoryview, n: int) -> int:
         for _ in self.can_write.ipoll(0):
             return self.stdout.write(view, n) or 0
         return 0
 
-    def feed(self):
+    def feed(self) -> None:
         self.held = False
 
-    def own_port(self, owned):
+    def own_port(self, owned: bool) -> None:
         micropython.kbd_intr(-1 if owned else 3)

@@ -14,13 +14,13 @@ _HEAD_BYTES = struct.calcsize(_HEAD)
 DATA_MAX = 0xFFFF
 
 
-def pack(sequence, data):
+def pack(sequence: int, data: bytes) -> bytes:
     """One copy as it lies on flash."""
     crc = binascii.crc32(data, binascii.crc32(struct.pack("<I", sequence)))
     return struct.pack(_HEAD, b"LS", sequence, len(data), crc & 0xFFFFFFFF) + data
 
 
-def unpack(raw):
+def unpack(raw: bytes) -> "tuple[int, bytes | None]":
     """(sequence, data) of a whole copy; (0, None) of a torn, foreign or damaged one."""
     if len(raw) < _HEAD_BYTES:
         return 0, None
@@ -36,13 +36,13 @@ def unpack(raw):
 class Store:
     """Named small files in one folder, which is made when first needed."""
 
-    def __init__(self, folder):
+    def __init__(self, folder: str) -> None:
         self.folder = folder
 
-    def _path(self, name, copy):
+    def _path(self, name: str, copy: int) -> str:
         return self.folder + "/" + name + "." + str(copy)
 
-    def _read(self, name, copy):
+    def _read(self, name: str, copy: int) -> "tuple[int, bytes | None]":
         try:
             file = open(self._path(name, copy), "rb")
         except OSError:
@@ -54,7 +54,7 @@ class Store:
         finally:
             file.close()
 
-    def _newest(self, name):
+    def _newest(self, name: str) -> "tuple[int, int, bytes | None]":
         """(copy, sequence, data) of the newest whole copy; (1, 0, None) when there is none."""
         first, first_data = self._read(name, 0)
         second, second_data = self._read(name, 1)
@@ -62,12 +62,12 @@ class Store:
             return 0, first, first_data
         return 1, second, second_data
 
-    def load(self, name):
+    def load(self, name: str) -> "bytes | None":
         """The bytes last saved whole under this name, or None."""
         return self._newest(name)[2]
 
-    def save(self, name, data):
-        """Write over the older copy; the newer one stays whole until this one is. Raises OSError."""
+    def save(self, name: str, data: bytes) -> None:
+        """Write over the older copy; the newer one stays whole meanwhile. Raises OSError."""
         if len(data) > DATA_MAX:
             raise ValueError("store: too long")
         copy, sequence, _ = self._newest(name)
