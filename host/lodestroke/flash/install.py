@@ -1,4 +1,4 @@
-"""Installing a bundle: inactive slot, sums checked on the board, pointer last, identity read back."""
+"""Installing a bundle: inactive slot, sums checked on the board, pointer last, id read back."""
 
 from __future__ import annotations
 
@@ -144,9 +144,9 @@ def _refuse_a_busy_board(port_name: str, say: Callable[[str], None]) -> None:
         say("no firmware of ours answers; going in through the prompt")
         return
     say(f"firmware {info.bundle_id.hex()} is running and lets go")
-    if info.state in states.ENERGISED:
+    if info.state in [states.NAMES[state] for state in states.ENERGISED]:
         raise FlashError(
-            "a run is under way on this board", at=port_name, got=f"state {states.NAMES[info.state]}",
+            "a run is under way on this board", at=port_name, got=f"state {info.state}",
             bound="safe or tripped, coil off",
             try_="end the run first (Ctrl-C in its window), then flash",
         )

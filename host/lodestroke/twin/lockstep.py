@@ -12,7 +12,7 @@ RX_MAX = 32      # bytes for the firmware per exchange: what its link takes in o
 
 
 class SteppedPlant(Protocol):
-    """What lock-step needs of a plant; `counts` are raw, in the order of lodeboard.limits.CHANNELS."""
+    """What lock-step needs of a plant. `counts`: raw, in the order of lodeboard.limits.CHANNELS."""
 
     counts: Any
 

@@ -1,4 +1,4 @@
-"""The firmware in a real MicroPython: behind a serial port (paced), or in lock-step with the plant."""
+"""The firmware in a real MicroPython: behind a serial port (paced), or in lock-step."""
 
 from .interpreter import available
 from .launcher import VirtualBoard, start_board

@@ -9,6 +9,7 @@ try:
     main(sys.argv[1])
 except Exception as problem:
     # The launcher words it for the user; a traceback would only be in the way.
-    parts = getattr(problem, "as_json", lambda: {"what": repr(problem)})()
+    as_json = getattr(problem, "as_json", None)
+    parts = as_json() if as_json else {"what": repr(problem)}
     print(json.dumps({"failed": parts}), flush=True)
     sys.exit(1)

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import contextlib
 import os
 import struct
 from collections.abc import Sequence
@@ -58,12 +59,10 @@ class Channel:
         return Request(kind, duty_a, duty_b, enable, tx)
 
     def answer(self, counts: Sequence[int] = (0,) * 6, inputs: int = 0, rx: bytes = b"") -> None:
-        """Reply with six raw counts, input bits and link bytes. A dead reader is no error here."""
+        """Reply with six raw counts, input bits, link bytes. A dead reader is no error here."""
         six = [int(count) for count in counts]
-        try:
+        with contextlib.suppress(BrokenPipeError):
             os.write(self.reply_fd, _REPLY.pack(*six, inputs | len(rx) << 8, 0) + rx)
-        except BrokenPipeError:
-            pass
 
     def close(self) -> None:
         """Close this end; may be called twice."""

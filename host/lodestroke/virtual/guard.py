@@ -1,4 +1,4 @@
-"""The virtual board's deadman and watchdog: what metal does when the firmware stops coming round."""
+"""The virtual board's deadman and watchdog: what metal does when the firmware hangs."""
 
 from __future__ import annotations
 

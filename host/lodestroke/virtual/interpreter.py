@@ -63,7 +63,7 @@ class Interpreter:
     """
 
     def __init__(
-        self, stdin: int, stdout: int, environment: dict[str, str], heap_kib: int, home: Path,
+        self, stdin: int, stdout: int, environment: dict[str, str], *, heap_kib: int, home: Path,
         prompt: bool = True,
     ) -> None:
         self.channel = Channel()
@@ -79,7 +79,7 @@ class Interpreter:
                 **environment, **self.channel.environment(),
             },
             pass_fds=self.channel.child_fds(),
-            preexec_fn=_own_terminal if prompt else None,
+            preexec_fn=_own_terminal if prompt else None,  # noqa: PLW1509 - no threads here
         )
         self.channel.launched()
 

@@ -61,7 +61,7 @@ class VirtualBoard:
         )
 
     def power_cut(self) -> None:
-        """Power away and back: no farewell, no message, a new boot nonce; flash keeps what it has."""
+        """Power away and back: no farewell, no message, a new boot nonce; flash stays."""
         side.ask(self._side, "power-cut")
 
     def reset(self) -> None:
@@ -110,6 +110,7 @@ def start_board(
     link: str | Path | None = None,
     seed: int = 0,
     folder: str | Path | None = None,
+    *,
     files: Mapping[str, bytes] | None = None,
     still: bool = False,
 ) -> VirtualBoard:

@@ -46,7 +46,7 @@ class VirtualEngine:
                     "LODESTROKE_BUNDLE": bundle_id.hex(),
                     "LODESTROKE_BOARD_ID": rig.board.serial or "virtual",
                 },
-                heap // 1024, self._folder, prompt=False,
+                heap_kib=heap // 1024, home=self._folder, prompt=False,
             )
         finally:
             os.close(stdin)

@@ -1,4 +1,4 @@
-"""Raw pseudo-terminals, how much waits in one, and the line ends that a terminal would have made."""
+"""Raw pseudo-terminals, how much waits in one, and the line ends of a board."""
 
 from __future__ import annotations
 
@@ -31,7 +31,7 @@ def forget(slave: int) -> None:
 
 
 def forget_by_name(name: str) -> None:
-    """Drop what waits on a terminal that nobody has open: no reader shall meet the last one's bytes."""
+    """Drop what waits on a terminal that nobody has open: the next reader starts clean."""
     slave = os.open(name, os.O_RDWR | os.O_NOCTTY)
     try:
         forget(slave)

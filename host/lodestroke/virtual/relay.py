@@ -88,7 +88,7 @@ class Relay:
                 "LODESTROKE_BOARD_ID": self.board_id,
                 "LODESTROKE_NONCE": str(int.from_bytes(os.urandom(4), "little") >> 2),
             },
-            self.heap_kib, self.work,
+            heap_kib=self.heap_kib, home=self.work,
         )
         self._cause = ""
 

@@ -1,4 +1,4 @@
-"""The process of a virtual board: builds plant and relay, announces the port, serves until told to end.
+"""The process of a virtual board: builds plant and relay, announces the port, serves.
 
 Started by the launcher as `python -m lodestroke.virtual CONFIG`, CONFIG being JSON with the
 fields of `BoardConfig`. Its first line on stdout is JSON with `port` and `side`. The end of its
@@ -75,7 +75,7 @@ def build_relay(config: BoardConfig) -> Relay:
 
 @contextlib.contextmanager
 def stable_name(link: str, port: str) -> Iterator[None]:
-    """A symbolic link to the port while the board is up. An older link is replaced, a file never."""
+    """A symbolic link to the port while the board is up; replaces a link, never a file."""
     if not link:
         yield
         return

@@ -11,6 +11,7 @@ import sys
 import time
 
 import wires
+
 from lodeboard.clock import MASK_US, us_after
 from lodeboard.hal_stdio import StdioHal
 from lodeboard.store import Store
@@ -121,7 +122,7 @@ class LockstepHal(VirtualHal):
             self._take(n)
 
     def _take(self, n):
-        """Bytes that came with an exchange go behind those not yet read; what has no room is lost."""
+        """New bytes go behind those not yet read; what has no room is lost."""
         new = self.rx_new
         wires.replies.readinto(new, n)
         if self.rx_at == self.rx_n:
@@ -145,8 +146,7 @@ class LockstepHal(VirtualHal):
 
     def write(self, view, n):
         room = wires.TX_MAX - self.n_tx
-        if n > room:
-            n = room
+        n = min(n, room)
         out = wires.out
         at = wires.HEAD + self.n_tx
         for i in range(n):

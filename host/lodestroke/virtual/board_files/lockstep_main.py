@@ -5,6 +5,7 @@ import sys
 from binascii import unhexlify
 
 import hal_virtual
+
 from lodeboard.board import Board
 from lodeboard.loop import Loop
 

@@ -32,7 +32,7 @@ def run(name):
 
 if os.getenv("LODESTROKE_MODE") == "lockstep":
     sys.path[:] = [os.getenv("LODESTROKE_ROM"), os.getenv("LODESTROKE_FIRMWARE")]
-    import lockstep_main
+    import lockstep_main  # noqa: F401 - runs the firmware
 else:
     mount(os.getenv("LODESTROKE_FLASH"), os.getenv("LODESTROKE_ROM"))
     import wires
