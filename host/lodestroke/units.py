@@ -142,7 +142,7 @@ def parse(text: object, unit: str) -> float:
         shape = {bool: "true or false", list: "a list", dict: "a table"}.get(type(text), "no text")
         raise UnitError(f"{shape} where a {kind} belongs", try_=f"write {_example(unit)}")
     if not isinstance(text, str):
-        return _plain(text, unit, kind, names)
+        return _plain(_float(text), unit, kind, names)
     if len(text) > _TEXT_MAX:
         raise UnitError(f"too long for a {kind}", bound=f"at most {_TEXT_MAX} characters",
                         try_=f"write {_example(unit)}")
@@ -157,10 +157,18 @@ def parse(text: object, unit: str) -> float:
 
 def _plain(number: float, unit: str, kind: str, names: tuple[str, ...]) -> float:
     if unit:
-        shown = f"{number:g}" if math.isfinite(float(number)) else "1"
+        shown = f"{number:g}" if math.isfinite(number) else "1"
         raise UnitError("number without unit", bound=f"a {kind} has a unit",
                         try_=f'write "{shown} {names[0]}"')
-    return _finite(float(number), kind)
+    return _finite(number, kind)
+
+
+def _float(number: float) -> float:
+    """A number of any length as a float: whole numbers beyond its range become infinite."""
+    try:
+        return float(number)
+    except OverflowError:
+        return math.inf
 
 
 def _finite(value: float, kind: str) -> float:
@@ -249,9 +257,8 @@ class Unit:
         return core_schema.with_info_before_validator_function(self._read, handler(source))
 
     def _read(self, value: object, info: ValidationInfo) -> object:
-        number = isinstance(value, int | float) and not isinstance(value, bool)
-        if info.context != IN_FILE and number:
-            return _finite(float(value), KNOWN[self.si][0])  # type: ignore[arg-type]
+        if info.context != IN_FILE and type(value) in (int, float):
+            return _finite(_float(value), KNOWN[self.si][0])  # type: ignore[arg-type]
         return parse(value, self.si)
 
 

@@ -7,7 +7,7 @@ from __future__ import annotations
 
 import difflib
 import sys
-from collections.abc import Callable
+from collections.abc import Callable, Iterator
 from dataclasses import dataclass, field
 from pathlib import Path as FilePath
 from typing import Annotated, Any
@@ -17,7 +17,7 @@ from pydantic_core import ErrorDetails
 
 from ..errors import LodestrokeError
 from ..units import IN_FILE, KNOWN, Unit, UnitError
-from .locate import Path, lines_of
+from .locate import Path, line_of, lines_of
 from .problems import Problem, fail, key_text, value_at
 
 if sys.version_info >= (3, 11):
@@ -87,7 +87,21 @@ def _parse(path: FilePath, text: str, kind: ErrorKind, noun: str) -> Document:
         raise kind(f"this {noun} file is nested too deeply", at=str(path),
                    got=f"{_depth(data)} levels", bound=f"at most {_DEPTH_MAX} levels",
                    try_="flatten it")
-    return Document(path, data, lines_of(text), kind)
+    lines = lines_of(text)
+    for key in _huge(data, ()):
+        raise kind("a whole number is too long", at=f"{path}, line {line_of(lines, key)}, "
+                   f"{key_text(key)}", got="a huge number", bound="64 bits, as TOML 1.0 says",
+                   try_="write an ordinary number")
+    return Document(path, data, lines, kind)
+
+
+def _huge(value: Any, path: Path) -> Iterator[Path]:
+    """Key paths of whole numbers beyond TOML's 64 bits."""
+    if isinstance(value, int) and not -(1 << 63) <= value < (1 << 63):
+        yield path
+    elif isinstance(value, dict | list):
+        for key, inner in value.items() if isinstance(value, dict) else enumerate(value):
+            yield from _huge(inner, (*path, key))
 
 
 def _depth(value: Any) -> int:
