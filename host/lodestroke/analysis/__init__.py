@@ -1,0 +1,1 @@
+"""Results with uncertainties, from logbook rows. Pure functions: nothing here opens anything."""
