@@ -10,14 +10,15 @@ from __future__ import annotations
 import contextlib
 import json
 import os
+import shutil
 import signal
 import sys
-from collections.abc import Iterator
+from collections.abc import Callable, Iterator
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
 
-from ..errors import PortError, Unavailable
+from ..errors import PortError, RigError, Unavailable
 from ..twin.lockstep import Lockstep
 from .interpreter import available, interpreter_path
 from .relay import Bench, Relay
@@ -54,6 +55,12 @@ def _bench(config: BoardConfig) -> tuple[Bench, str, int]:
     from ..rig import load_rig  # noqa: PLC0415
 
     rig = load_rig(config.rig)
+    if rig.board.kind != "virtual":
+        raise RigError(
+            "this rig is wired to a real board", at=f"{config.rig}, board.kind",
+            got=f'"{rig.board.kind}"', bound='"virtual"',
+            try_="connect that board, or use a rig for simulation: hil_configs/bench-sim.toml",
+        )
     heap = int(getattr(rig.board, "heap", None) or HEAP_KIB * 1024)
     serial = getattr(rig.board, "serial", None) or "virtual"
     return Lockstep(Plant(params_from_rig(rig), config.seed)), serial, heap // 1024
@@ -99,28 +106,49 @@ def stable_name(link: str, port: str) -> Iterator[None]:
                 path.unlink()
 
 
-def serve_until_told(relay: Relay) -> None:
-    """Serve; SIGTERM and Ctrl-C end it, and the handlers are put back."""
+@contextlib.contextmanager
+def ended_by_signals() -> Iterator[Callable[[Relay], None]]:
+    """SIGTERM, Ctrl-C and a closed terminal end the relay that is handed to the yielded function;
+    before that they end the process, with its clean-up.
+    """
+    relays: list[Relay] = []
 
     def end(_number: int, _frame: Any) -> None:
-        relay.ending = True
+        if not relays:
+            sys.exit(0)
+        for relay in relays:
+            relay.ending = True
 
-    before = {number: signal.signal(number, end) for number in (signal.SIGTERM, signal.SIGINT)}
+    numbers = (signal.SIGTERM, signal.SIGINT, signal.SIGHUP)
+    before = {number: signal.signal(number, end) for number in numbers}
     try:
-        relay.serve()
+        yield relays.append
     finally:
         for number, handler in before.items():
             signal.signal(number, handler)
 
 
+def serve(config: BoardConfig, ready: Callable[[Relay], None], parent_fd: int = -1) -> None:
+    """Build a board, say that it is ready, serve until told to end. The work folder goes with it."""
+    try:
+        with ended_by_signals() as end_with_signals:
+            relay = build_relay(config)
+            relay.parent_fd = parent_fd
+            end_with_signals(relay)
+            try:
+                with stable_name(config.link, relay.port):
+                    ready(relay)
+                    relay.serve()
+            finally:
+                relay.close()
+    finally:
+        shutil.rmtree(config.work, ignore_errors=True)
+
+
 def main(argument: str) -> None:
     """The launcher's child."""
-    config = BoardConfig(**json.loads(argument))
-    relay = build_relay(config)
-    relay.parent_fd = sys.stdin.fileno()
-    try:
-        with stable_name(config.link, relay.port):
-            print(json.dumps({"port": relay.port, "side": relay.side.path}), flush=True)
-            serve_until_told(relay)
-    finally:
-        relay.close()
+
+    def ready(relay: Relay) -> None:
+        print(json.dumps({"port": relay.port, "side": relay.side.path}), flush=True)
+
+    serve(BoardConfig(**json.loads(argument)), ready, sys.stdin.fileno())
