@@ -10,7 +10,7 @@ from pathlib import Path
 from typing import Any
 
 from ..errors import PortLost
-from ..plant import Plant, params_from_rig
+from ..plant import Plant
 from ..shipped import firmware_dir
 from ..twin.lockstep import Lockstep
 from ..twin.simport import SimPort
@@ -28,7 +28,7 @@ class VirtualEngine:
     """
 
     def __init__(self, rig: Any, seed: int = 0, bundle_id: bytes = b"\0" * 8) -> None:
-        self.plant = Plant(params_from_rig(rig), seed)
+        self.plant = Plant.from_rig(rig, seed)
         self.lockstep = Lockstep(self.plant)
         self.tick_s = float(rig.board.tick)
         self.port = SimPort(self, "lock-step virtual board")

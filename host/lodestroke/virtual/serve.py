@@ -51,7 +51,7 @@ def _bench(config: BoardConfig) -> tuple[Bench, str, int]:
     """(plant in lock-step, board id, heap in KiB) of a rig."""
     if config.still:
         return Lockstep(StillPlant()), "still", HEAP_KIB
-    from ..plant import Plant, params_from_rig  # noqa: PLC0415 - slow to import, not always needed
+    from ..plant import Plant  # noqa: PLC0415 - slow to import, not always needed
     from ..rig import load_rig  # noqa: PLC0415
 
     rig = load_rig(config.rig)
@@ -63,7 +63,7 @@ def _bench(config: BoardConfig) -> tuple[Bench, str, int]:
         )
     heap = int(getattr(rig.board, "heap", None) or HEAP_KIB * 1024)
     serial = getattr(rig.board, "serial", None) or "virtual"
-    return Lockstep(Plant(params_from_rig(rig), config.seed)), serial, heap // 1024
+    return Lockstep(Plant.from_rig(rig, config.seed)), serial, heap // 1024
 
 
 def build_relay(config: BoardConfig) -> Relay:
