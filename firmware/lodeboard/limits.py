@@ -46,7 +46,7 @@ FIELDS = tuple([
     "ambient_mc", "hot_soft_mc", "hot_hard_mc", "r20_mohm", "alpha_ppm",
     "heat_winding_q", "heat_leak_winding_q", "heat_leak_body_q", "heat_body_leak_q",
     # regulator: duty in Q15
-    "kp_q8", "ki_q8", "feed_q8", "duty_min_q15", "duty_max_q15",
+    "kp_q8", "ki_q8", "feed_q8", "response_q8", "duty_min_q15", "duty_max_q15",
     # fold-back of the target while a soft level is exceeded, 256 = full target
     "fold_min_q8", "fold_fall_q8", "fold_rise_q8",
     # time

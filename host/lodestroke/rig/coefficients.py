@@ -84,6 +84,7 @@ def regulator_values(rig: Rig) -> dict[str, int]:
         "kp_q8": round(gain * decay * q8),
         "ki_q8": max(1, round(gain * (1.0 - decay) * q8)),
         "feed_q8": round(ohm / driver.supply * q8),
+        "response_q8": max(1, round(256 * (1.0 - decay))),
         "duty_min_q15": -top if driver.bridge == "full" else 0,
         "duty_max_q15": top,
     }
