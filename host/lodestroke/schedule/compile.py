@@ -146,7 +146,8 @@ class _Compiler:
     def _repeat(self, times: int, steps: list[Any], path: StepPath, step: int) -> None:
         """Steps, so many times over; a later turn starts from what the last one left."""
         if times > 1:
-            self.hot = self.hot or leaves_current(self.schedule, steps)
+            self.hot = self.hot or leaves_current(
+                self.schedule, steps, self.rig.board.tick)
             self.marked = self.marked or _ends_on_mark(steps)
         self._open(times, step)
         for i, inner in enumerate(steps):
@@ -239,18 +240,18 @@ def _ma(amperes: float) -> int:
     return round(amperes * 1000)
 
 
-def leaves_current(schedule: Schedule, steps: list[Any]) -> bool:
-    """Whether current flows when these steps end; marks leave it as it is, a lagging coil too."""
+def leaves_current(schedule: Schedule, steps: list[Any], tick_s: float) -> bool:
+    """Whether current flows when these steps end; a mark changes nothing, a coil may lag."""
     for step in reversed(steps):
         if isinstance(step, NestedStep):
-            return leaves_current(schedule, list(step.steps))
+            return leaves_current(schedule, list(step.steps), tick_s)
         if isinstance(step, RampStep):
             return bool(_ma(step.ramp.to) or _ma(step.ramp.to_b))
         if isinstance(step, HoldStep):
             return bool(_ma(step.hold.current) or _ma(step.hold.current_b))
         if isinstance(step, WaveStep):
-            shape = resolve(schedule.waves[step.wave], step)
-            return bool(shape.b and shape.lag)
+            _, a, b = corners(resolve(schedule.waves[step.wave], step), tick_s)[0]
+            return bool(a or b)
         if isinstance(step, RestStep):
             return False
     return False

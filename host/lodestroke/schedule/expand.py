@@ -32,8 +32,8 @@ class Expanded:
     cycle_starts: list[int] = field(default_factory=list)
     cycle_ends: list[int] = field(default_factory=list)
     marks: list[tuple[int, int]] = field(default_factory=list)             # tick, mark
-    limits: list[tuple[int, str, int]] = field(default_factory=list)       # tick, field, value
-    relaxed: list[int] = field(default_factory=list)
+    # tick, limit field, value; field "" means that every limit is back to the rig's
+    limits: list[tuple[int, str, int]] = field(default_factory=list)
 
 
 def expand(program: Program) -> Expanded:
@@ -86,7 +86,7 @@ class _Reader:
             elif op == board.LIMIT:
                 self.out.limits.append((self.tick, FIELDS[arg], n))
             elif op == board.RELAX:
-                self.out.relaxed.append(self.tick)
+                self.out.limits.append((self.tick, "", 0))
             else:
                 raise ValueError(f"record {at} has unknown op {op}")
             at += 1

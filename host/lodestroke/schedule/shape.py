@@ -106,7 +106,7 @@ def cycles_of(step: WaveStep, shape: Shape) -> int:
     if step.cycles is not None:
         return step.cycles
     assert step.duration is not None
-    return max(1, math.floor(step.duration / shape.period + 0.5))
+    return max(1, math.floor(step.duration / shape.period + 0.5 + 1e-9))   # half a cycle: up
 
 
 def count_cycles(schedule: Schedule) -> int:
