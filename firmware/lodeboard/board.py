@@ -42,6 +42,7 @@ class Board:
         self.samples = Samples()
         self.cycles = Cycles(self.journal)
         self.run_token = 0
+        self.last_cycle = 0          # 0: the program's own end decides
         self.live = False            # samples are being taken: from GO to the end plus its tail
         self.tail_left = 0
         self.locked = False
@@ -127,11 +128,12 @@ class Board:
         self.interlocks.soft = False
         self.tick.load()
 
-    def go(self, run_token: int, cycles_before: int) -> int:
-        """Start the program from its first record."""
+    def go(self, run_token: int, cycles_before: int, last_cycle: int) -> int:
+        """Start the program from its first record; it ends early once last_cycle is complete."""
         if not self.move("go"):
             return messages.WRONG_STATE
         self.run_token = run_token
+        self.last_cycle = last_cycle
         self.sequencer.restart()
         self.cycles.start(cycles_before)
         self.samples.clear()

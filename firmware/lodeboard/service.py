@@ -151,7 +151,8 @@ class Service:
         """A command that gets a reply; its result."""
         board = self.board
         if code == _GO:
-            return board.go(_le30(buf, _BODY), _le30(buf, _BODY + 4))  # type: ignore[attr-defined, no-any-return]
+            return board.go(  # type: ignore[attr-defined, no-any-return]
+                _le30(buf, _BODY), _le30(buf, _BODY + 4), _le30(buf, _BODY + 8))
         if code == _CLEAR:
             serial = buf[_BODY + 1] | (buf[_BODY + 2] << 8)
             return board.clear(buf[_BODY], serial)  # type: ignore[attr-defined, no-any-return]
@@ -270,12 +271,12 @@ class Service:
         self.beat_us = now_us
         dropped = self.samples.dropped
         late = board.late_ticks  # type: ignore[attr-defined]
-        pack_into("<IIIIHHHBBB", self.out, 4, self.samples.written,
+        pack_into("<IIIIHHHHBBB", self.out, 4, self.samples.written,
                   board.cycles.number, self.journal.newest, board.run_token,  # type: ignore[attr-defined]
                   dropped if dropped < 65535 else 65535, late if late < 65535 else 65535,
-                  board.worst_gap_us, board.sequencer.step_now,  # type: ignore[attr-defined]
+                  board.worst_gap_us, board.trip_serial, board.sequencer.step_now,  # type: ignore[attr-defined]
                   board.state, board.trip_code)  # type: ignore[attr-defined]
-        return self._close(0x82, 25)
+        return self._close(0x82, 27)
 
     def _compose_entry(self, now_us: int) -> bool:
         """The next journal entry, going back to the oldest unsaved after a while without progress."""

@@ -96,6 +96,10 @@ class Tick:
         sequencer.cycle_mark = 0
         sequencer.mark = -1
         found = sequencer.step()
+        if sequencer.cycle_mark and self.cycles.is_open:
+            last = self.board.last_cycle  # type: ignore[attr-defined]
+            if last and self.cycles.number + 1 >= last:
+                found = ENDED
         if found != RUNS:
             if found == ENDED:
                 self.board.finish()  # type: ignore[attr-defined]

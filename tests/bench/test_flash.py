@@ -7,6 +7,7 @@ from collections.abc import Iterator
 
 import pytest
 from boards import RIG, ROOT, hello, mpremote, until
+
 from lodestroke.errors import FlashError, PortBusy, PortError
 from lodestroke.flash import board_image, build_bundle, bundle_id_for, install
 from lodestroke.flash.bundle import GOOD, SLOTS, pointer_line, sha256

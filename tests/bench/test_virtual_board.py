@@ -13,6 +13,7 @@ from pathlib import Path
 import pytest
 import serial
 from boards import RIG, alive, hello, mpremote, until
+
 from lodeboard.wire.frames import build_down
 from lodeboard.wire.messages import WIRE_VERSION
 from lodestroke.flash import board_image

@@ -7,6 +7,7 @@ from pathlib import Path
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
+
 from lodeboard.store import DATA_MAX, Store, pack, unpack
 
 

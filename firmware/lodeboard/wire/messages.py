@@ -17,7 +17,7 @@ DOWN = (
     (0x43, "seal", "<BHI8s", ("blob", "length", "crc32", "fingerprint")),
     (0x44, "stream", "<H", ("every_ticks",)),                  # 0: no live samples
     (0x45, "arm", "<8sI", ("fingerprint", "program_crc32")),
-    (0x46, "go", "<II", ("run_token", "cycles_before")),
+    (0x46, "go", "<III", ("run_token", "cycles_before", "last_cycle")),   # 0: no last cycle
     (0x47, "pause", "<", ()),
     (0x48, "resume", "<", ()),
     (0x49, "stop", "<", ()),
@@ -40,9 +40,9 @@ UP = (
         "wire_version", "bundle_id", "fingerprint", "board_id", "boot_nonce", "run_token",
         "oldest_entry", "state", "capabilities")),
     (0x81, "reply", "<BBBi", ("down_frame", "command", "result", "detail")),
-    (0x82, "beat", "<IIIIHHHBBB", (
+    (0x82, "beat", "<IIIIHHHHBBB", (
         "tick", "cycle", "newest_entry", "run_token", "samples_dropped", "late_ticks",
-        "worst_gap_us", "step", "state", "trip_code")),
+        "worst_gap_us", "trip_serial", "step", "state", "trip_code")),
     (0x83, "sample", SAMPLE_FORMAT, SAMPLE_FIELDS),
     (0x84, "recorded", "<H" + SAMPLE_FORMAT[1:], ("row",) + SAMPLE_FIELDS),
     (0x90, "cycle", "<IIIIiiiiiiiHhhB", (

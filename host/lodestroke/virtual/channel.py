@@ -49,7 +49,7 @@ class Channel:
     def take(self) -> Request | None:
         """The next request, waiting for it; None when the interpreter is gone.
 
-        A request is one write of at most 255 bytes, which a pipe never splits.
+        A request is one write of at most 263 bytes, which a pipe never splits.
         """
         head = os.read(self.request_fd, _REQUEST.size)
         if len(head) < _REQUEST.size:

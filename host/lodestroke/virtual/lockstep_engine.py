@@ -32,40 +32,59 @@ class VirtualEngine:
         self.lockstep = Lockstep(self.plant)
         self.tick_s = float(rig.board.tick)
         self.port = SimPort(self, "lock-step virtual board")
+        self.bundle_id = bundle_id
+        self.board_id = rig.board.serial or "virtual"
+        self.heap_kib = int(getattr(rig.board, "heap", None) or HEAP_KIB * 1024) // 1024
+        self.boots = 0
         self._folder = Path(tempfile.mkdtemp(prefix="lodestroke-"))
         self._said = self._folder / "said.txt"
-        heap = int(getattr(rig.board, "heap", None) or HEAP_KIB * 1024)
-        stdin = os.open(os.devnull, os.O_RDONLY)
-        said = os.open(self._said, os.O_WRONLY | os.O_CREAT)
+        self._board: Interpreter | None = None
         try:
-            self._board: Interpreter | None = Interpreter(
-                stdin, said,
-                {
-                    "LODESTROKE_MODE": "lockstep",
-                    "LODESTROKE_FIRMWARE": str(firmware_dir()),
-                    "LODESTROKE_BUNDLE": bundle_id.hex(),
-                    "LODESTROKE_BOARD_ID": rig.board.serial or "virtual",
-                },
-                heap_kib=heap // 1024, home=self._folder, prompt=False,
+            self.reboot()
+        except BaseException:
+            self.close()
+            raise
+
+    def reboot(self, watchdog: bool = False) -> None:
+        """Power away and back, or a reset: RAM is gone, what was stored stays."""
+        if self._board is not None:
+            self._board.end()
+        self.boots += 1
+        environment = {
+            "LODESTROKE_MODE": "lockstep",
+            "LODESTROKE_FIRMWARE": str(firmware_dir()),
+            "LODESTROKE_FLASH": str(self._folder / "store"),
+            "LODESTROKE_BUNDLE": self.bundle_id.hex(),
+            "LODESTROKE_BOARD_ID": self.board_id,
+            "LODESTROKE_NONCE": str(self.boots),
+            "LODESTROKE_RESET": "watchdog" if watchdog else "power",
+        }
+        with open(os.devnull, "rb") as stdin, self._said.open("wb") as said:
+            self._board = Interpreter(
+                stdin.fileno(), said.fileno(), environment,
+                heap_kib=self.heap_kib, home=self._folder, prompt=False,
             )
-        finally:
-            os.close(stdin)
-            os.close(said)
 
     def advance(self) -> None:
         """Serve one exchange. Raises PortLost when the interpreter has ended."""
+        while (request := self._request()).kind == channel.RESET:
+            self.reboot()
+        counts, rx = self.lockstep.exchange(
+            request.duty_a, request.duty_b, request.enable, request.tx
+        )
+        assert self._board is not None
+        self._board.channel.answer(counts, self.lockstep.inputs, rx)
+
+    def _request(self) -> channel.Request:
         if self._board is None:
             raise PortLost("the virtual board has been closed", at=self.port.name)
         pipe = self._board.channel
         if not select.select([pipe.request_fd], [], [], _ANSWER_S)[0]:
             raise self._lost(f"no request within {_ANSWER_S:g} s")
         request = pipe.take()
-        if request is None or request.kind == channel.RESET:
-            raise self._lost("its interpreter ended")
-        counts, rx = self.lockstep.exchange(
-            request.duty_a, request.duty_b, request.enable, request.tx
-        )
-        pipe.answer(counts, self.lockstep.inputs, rx)
+        if request is None:
+            raise self._lost("its interpreter ended, or it gave its port back")
+        return request
 
     def _lost(self, how: str) -> PortLost:
         said = self._said.read_text(errors="replace").strip()[-400:]
@@ -79,4 +98,4 @@ class VirtualEngine:
         if self._board is not None:
             self._board.end()
             self._board = None
-            shutil.rmtree(self._folder, ignore_errors=True)
+        shutil.rmtree(self._folder, ignore_errors=True)

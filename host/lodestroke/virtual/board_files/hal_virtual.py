@@ -92,12 +92,12 @@ class VirtualHal(StdioHal):
 
 
 class LockstepHal(VirtualHal):
-    """Simulated time; every byte of the link travels with an exchange, stored files in memory."""
+    """Simulated time; every byte of the link travels with an exchange."""
 
     def __init__(self):
         VirtualHal.__init__(self)
+        self.store = Store(os.getenv("LODESTROKE_FLASH"))
         self.time_us = _FIRST_US
-        self.files = {}
         self.rx = bytearray(_RX_SIZE)
         self.rx_new = bytearray(_RX_SIZE)
         self.rx_at = 0
@@ -159,12 +159,6 @@ class LockstepHal(VirtualHal):
 
     def own_port(self, owned):
         """Nobody else wants it."""
-
-    def load(self, name):
-        return self.files.get(name)
-
-    def save(self, name, data):
-        self.files[name] = bytes(data)
 
 
 def open_hal(config):

@@ -9,7 +9,11 @@ import hal_virtual
 from lodeboard.board import Board
 from lodeboard.loop import Loop
 
-board = Board(hal_virtual.open_hal({}), unhexlify(os.getenv("LODESTROKE_BUNDLE") or "00" * 8))
+hal = hal_virtual.open_hal({})
+board = Board(hal, unhexlify(os.getenv("LODESTROKE_BUNDLE") or "00" * 8))
 board.boot()
-Loop(board).run()
+loop = Loop(board)
+loop.run()
+if loop.service.reset_wanted:
+    hal.reset()
 sys.exit(0)

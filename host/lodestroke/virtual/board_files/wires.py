@@ -19,7 +19,7 @@ GUARD = 5          # duty a: deadman in ms, duty b: watchdog in ms
 
 REQUEST = "<BBhhBB"
 HEAD = 8
-TX_MAX = 247
+TX_MAX = 255
 
 requests = open(int(os.getenv("LODESTROKE_REQUEST_FD") or "-1"), "wb")
 replies = open(int(os.getenv("LODESTROKE_REPLY_FD") or "-1"), "rb")
