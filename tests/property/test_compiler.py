@@ -12,6 +12,7 @@ from typing import Any
 import numpy as np
 from hypothesis import HealthCheck, assume, given, settings
 from hypothesis import strategies as st
+
 from lodeboard import program as board
 from lodeboard.limits import Limits
 from lodestroke.errors import ScheduleError
@@ -185,7 +186,8 @@ class Reading:
         else:
             top, fall = v["rise"] + v["hold"], v["fall"]
             period = top + fall + v["rest"]
-        edges = [0, *(int(np.floor(t / TICK_S + 0.5)) for t in (v["rise"], top, top + fall, period))]
+        ends = (v["rise"], top, top + fall, period)
+        edges = [0, *(int(np.floor(t / TICK_S + 0.5)) for t in ends)]
         height = [0.0, 1.0, 1.0, 0.0, 0.0]
         n = edges[-1]
         other = v["coil_b"]

@@ -53,38 +53,57 @@ def reaction_s(rig: Rig, *lags: float) -> float:
 
 
 def interlock_margins(rig: Rig, push_pa: float) -> list[dict[str, Any]]:
-    """One row per valve side: collapse less hard limit, less everything that can add to it.
+    """One row per pressure interlock that guards a valve: collapse less the reverse pressure at its
+    hard limit, less everything that can add to it before the current is off.
 
-    The rate of rise is that of the slug's inertance on the chamber's compliance under the greatest
-    pressure that can drive it (undamped step response, so an upper bound): p * sqrt(1 / (I C)).
-    A negative margin means that it cannot be shown statically; a dry-run shows what happens.
+    A negative margin means that it cannot be shown by calculation; a dry-run shows what happens.
     """
-    sensors, limits = rig.sensors, rig.limits
-    inertance = rig.slug.density * rig.slug.length / rig.channel.area_m2
-    omega = 1.0 / math.sqrt(inertance * rig.chamber.compliance)
-    inlet_u = sensors.inlet.uncertainty if sensors.inlet is not None else 0.0
-    inlet_lag = sensors.inlet.lag if sensors.inlet is not None else 0.0
-    sides = (
-        ("outlet_reverse", rig.valves.outlet, limits.outlet_reverse, _back_pa(rig),
-         math.hypot(sensors.outlet.uncertainty, sensors.chamber.uncertainty),
-         (sensors.outlet.lag, sensors.chamber.lag)),
-        ("inlet_reverse", rig.valves.inlet, limits.inlet_reverse, push_pa,
-         math.hypot(sensors.chamber.uncertainty, inlet_u), (sensors.chamber.lag, inlet_lag)),
+    limits, inlet = rig.limits, rig.inlet.head
+    inlet_valve = min(valve.collapse for valve in rig.valves.inlet)
+    outlet_valve = min(valve.collapse for valve in rig.valves.outlet)
+    back, omega = _back_pa(rig), _omega(rig)
+    into_outlet = sum(valve.resistance for valve in rig.valves.outlet) * rig.outlet.compliance
+    chamber, outlet = rig.sensors.chamber, rig.sensors.outlet
+    inlet_sensor = [] if rig.sensors.inlet is None else [rig.sensors.inlet]
+    # interlock, collapse, reverse at the hard limit, what drives it, rate constant, sensors
+    rows = (
+        ("outlet_reverse", outlet_valve, limits.outlet_reverse.hard, back, omega,
+         [outlet, chamber]),
+        ("inlet_reverse", inlet_valve, limits.inlet_reverse.hard, push_pa, omega,
+         [chamber, *inlet_sensor]),
+        ("chamber_high", inlet_valve, limits.chamber_high.hard - inlet, push_pa, omega, [chamber]),
+        ("chamber_low", outlet_valve, rig.outlet.head - limits.chamber_low.hard, back, omega,
+         [chamber]),
+        ("outlet_high", outlet_valve, limits.outlet_high.hard - inlet, push_pa, 1.0 / into_outlet,
+         [outlet]),
     )
-    rows = []
-    for name, valves, pair, drive, uncertainty, lags in sides:
-        # what is left to drive it once the limit is reached
-        rate = max(0.0, drive - pair.hard) * omega
-        collapse = min(valve.collapse for valve in valves)
-        doubt = _K * rig.tolerances.collapse * collapse
-        delay = reaction_s(rig, *lags)
-        rows.append({
-            "interlock": name, "collapse_pa": collapse, "hard_pa": pair.hard, "soft_pa": pair.soft,
-            "driving_pa": drive, "sensor_pa": _K * uncertainty, "collapse_doubt_pa": doubt,
-            "reaction_s": delay, "rate_pa_s": rate, "overshoot_pa": rate * delay,
-            "margin_pa": collapse - pair.hard - _K * uncertainty - doubt - rate * delay,
-        })
-    return rows
+    return [_row(rig, *row) for row in rows]
+
+
+def _row(
+    rig: Rig, name: str, collapse: float, hard: float, drive: float, per_s: float,
+    sensors: list[PressureSensor],
+) -> dict[str, Any]:
+    """The rate of rise is what is left to drive it, times the rate constant."""
+    rate = max(0.0, drive - hard) * per_s
+    uncertainty = _K * math.hypot(*(sensor.uncertainty for sensor in sensors))
+    doubt = _K * rig.tolerances.collapse * collapse
+    delay = reaction_s(rig, *(sensor.lag for sensor in sensors))
+    return {
+        "interlock": name, "collapse_pa": collapse, "reverse_at_hard_pa": hard,
+        "driving_pa": drive, "sensor_pa": uncertainty, "collapse_doubt_pa": doubt,
+        "reaction_s": delay, "rate_pa_s": rate, "overshoot_pa": rate * delay,
+        "margin_pa": collapse - hard - uncertainty - doubt - rate * delay,
+    }
+
+
+def _omega(rig: Rig) -> float:
+    """Rate constant in 1/s of the slug's inertance on the chamber's compliance, 1/sqrt(I C).
+
+    Undamped step response, so an upper bound.
+    """
+    inertance = rig.slug.density * rig.slug.length / rig.channel.area_m2
+    return 1.0 / math.sqrt(inertance * rig.chamber.compliance)
 
 
 def _back_pa(rig: Rig) -> float:

@@ -20,4 +20,5 @@ def load_rig(path: str | Path) -> Rig:
     good = read_fields(Rig, document)
     document.problems.extend(rig_problems(good))
     document.raise_if_any()
-    return Rig(**good, source=document.path.resolve())
+    given = {name: value for name, value in good.items() if name in document.data}
+    return Rig(**given, source=document.path.resolve())

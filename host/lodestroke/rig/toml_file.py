@@ -7,7 +7,7 @@ from __future__ import annotations
 
 import difflib
 import sys
-from collections.abc import Callable, Iterator
+from collections.abc import Callable, Iterable, Iterator
 from dataclasses import dataclass, field
 from pathlib import Path as FilePath
 from typing import Annotated, Any
@@ -242,10 +242,22 @@ def _unit_at(model: type[BaseModel], path: Path) -> str:
         return ""
     for one in _model_at(model, path[:keys[-1]]):
         info = one.model_fields.get(str(path[keys[-1]]))
-        for item in info.metadata if info is not None else ():
-            if isinstance(item, Unit) and item.si in KNOWN:
-                return item.si
+        unit = unit_of(info.annotation, info.metadata) if info is not None else None
+        if unit is not None:
+            return unit
     return ""
+
+
+def unit_of(annotation: Any, metadata: Iterable[Any] = ()) -> str | None:
+    """The SI unit of a quantity's field, also of one that may be left out; None for no quantity."""
+    for item in (*metadata, *getattr(annotation, "__metadata__", ())):
+        if isinstance(item, Unit) and item.si in KNOWN:
+            return item.si
+    for inner in getattr(annotation, "__args__", ()):
+        unit = unit_of(inner)
+        if unit is not None:
+            return unit
+    return None
 
 
 def _near(key: str, names: list[str]) -> str:
@@ -256,4 +268,4 @@ def _near(key: str, names: list[str]) -> str:
     return f"remove it; known here: {', '.join(names)}" if names else "remove it"
 
 
-__all__ = ["Document", "Problem", "Table", "key_text", "read_fields", "read_toml"]
+__all__ = ["Document", "Problem", "Table", "key_text", "read_fields", "read_toml", "unit_of"]
