@@ -15,6 +15,7 @@ from .thermal import Coil
 from .tick import Tick
 from .wire import messages
 
+_NO_CURRENT = (states.SAFE, states.ARMED)      # a tuple made in the tick would allocate
 _TRIP_FORMAT = "<IHBBBIiiB"
 _TRIP_BYTES = const(22)
 _END_FORMAT = "<IIIBI"
@@ -205,7 +206,7 @@ class Board:
         self.trip_serial = (self.trip_serial + 1) & 0xFFFF
         self.latch_dirty = True
         was_live = self.live
-        self.tick.ramping = category == 1 and self.state not in (states.SAFE, states.ARMED)
+        self.tick.ramping = category == 1 and self.state not in _NO_CURRENT
         if not self.tick.ramping:
             self.tick.off()
         self.move("TRIP")
