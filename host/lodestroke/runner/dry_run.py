@@ -1,0 +1,95 @@
+"""Dry-runs: a schedule on the twin or on the lock-step virtual board, and what would happen."""
+
+from __future__ import annotations
+
+import hashlib
+from collections.abc import Callable
+from dataclasses import dataclass
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+
+from .. import trips
+from ..errors import ScheduleError
+from ..link import Client
+from ..link.rows import sample_rows
+from . import session
+from .collect import Collector, Memory, Outcome
+
+if TYPE_CHECKING:
+    from ..rig import Rig
+    from ..schedule import Schedule
+
+PLACES = ("twin", "virtual")
+_DRY_TOKEN = 1
+
+
+@dataclass(frozen=True)
+class DryRun:
+    """What a dry-run showed: the figures of --json, every sample, cycles and marks."""
+
+    result: dict[str, Any]
+    samples: np.ndarray
+    cycles: list[dict[str, int]]
+    marks: list[dict[str, int]]
+
+
+def open_engine(rig: Rig, seed: int, on: str) -> Any:
+    """A simulated board in lock-step. Raises Unavailable where there is no interpreter."""
+    if on == "twin":
+        from ..twin.engine import TwinEngine
+
+        return TwinEngine(rig, seed)
+    if on == "virtual":
+        from ..virtual.lockstep_engine import VirtualEngine
+
+        return VirtualEngine(rig, seed)
+    raise ScheduleError("unknown place for a dry-run", at="--on", got=on, bound=", ".join(PLACES),
+                        try_="choose one of these")
+
+
+def dry_run(rig: Rig, schedule: Schedule, *, seed: int = 0, on: str = "twin",
+            stop: Callable[[], str] = lambda: "",
+            progress: Callable[[Outcome], None] = lambda outcome: None) -> DryRun:
+    """Run a schedule in simulated time. Raises ScheduleError, Unavailable, LinkError."""
+    from ..schedule import compile_program
+
+    program = compile_program(schedule, rig)
+    engine = open_engine(rig, seed, on)
+    try:
+        client = Client(engine.port)
+        client.hello()
+        session.load(client, rig, program, every_ticks=1)
+        before = engine.plant.truth()
+        session.start(client, rig, program, _DRY_TOKEN)
+        sink = Memory()
+        outcome = Collector(client, sink, _DRY_TOKEN, stop=stop, progress=progress).run()
+        truth = engine.plant.truth()
+    finally:
+        engine.close()
+    rows = bytes(sink.rows)
+    result = _figures(rig, outcome, rows, before, truth)
+    result.update(seed=seed, on=on, schedule=schedule.title, rig=rig.title,
+                  cycles_planned=program.cycles, ticks_planned=program.ticks)
+    return DryRun(result, sample_rows(rows), sink.cycles, sink.marks)
+
+
+def _figures(rig: Rig, outcome: Outcome, rows: bytes, before: dict[str, float],
+             truth: dict[str, float]) -> dict[str, Any]:
+    duration_s = outcome.end_tick * rig.board.tick
+    delivered_ul = (truth["delivered_m3"] - before["delivered_m3"]) * 1e9
+    return {
+        "ticks": len(rows) // 28,
+        "cycles": outcome.cycles_done,
+        "duration_s": round(duration_s, 6),
+        "delivered_ul": round(delivered_ul, 4),
+        "mean_flow_ul_min": round(delivered_ul / duration_s * 60.0, 3) if duration_s else 0.0,
+        "peak_chamber_pa": round(truth["peak_chamber_pa"], 1),
+        "peak_outlet_pa": round(truth["peak_outlet_pa"], 1),
+        "min_margin_pa": round(truth["min_margin_pa"], 1),
+        "collapsed": bool(truth["collapses_inlet"] + truth["collapses_outlet"]),
+        "peak_coil_c": round(truth["peak_coil_c"], 3),
+        "trips": [trips.as_json(trip) for trip in outcome.trips],
+        "end": outcome.asked_to_stop or outcome.why,
+        "trace_sha256": hashlib.sha256(rows).hexdigest(),
+    }

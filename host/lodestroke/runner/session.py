@@ -1,0 +1,87 @@
+"""From an open link to a running program: who is there, what it needs, arm, go."""
+
+from __future__ import annotations
+
+import secrets
+from typing import TYPE_CHECKING
+
+from lodeboard import trips as trip_table
+
+from .. import trips
+from ..errors import LinkError, Tripped
+from ..link import Beat, BoardInfo, Client
+
+if TYPE_CHECKING:
+    from ..rig import Rig
+    from ..schedule import Program
+
+
+def new_token() -> int:
+    """A number that ties what a board reports to one run; 30 bits, never 0."""
+    return secrets.randbelow((1 << 30) - 1) + 1
+
+
+def check_board(info: BoardInfo, bundle_id: bytes, port: str) -> None:
+    """The board must run the very firmware that this computer has. Raises LinkError."""
+    if info.bundle_id != bundle_id:
+        raise LinkError(
+            "the board runs other firmware than this computer has for the rig", at=port,
+            got=f"bundle {info.bundle_id.hex()}", bound=f"bundle {bundle_id.hex()}",
+            try_=f"install it: lodestroke flash RIG --port {port}")
+
+
+def look(client: Client) -> Beat:
+    """The board's state now, asked for."""
+    client.command("status")
+    kept = []
+    end_s = client.port.now_s() + 2.0
+    try:
+        while client.port.now_s() < end_s:
+            event = client.poll(0.2)
+            if isinstance(event, Beat):
+                return event
+            if event is not None:
+                kept.append(event)
+    finally:
+        client.events.extendleft(reversed(kept))
+    raise LinkError("the board does not say how it is", at=client.port.name, got="no beat",
+                    bound="a beat within 2 s", try_="reset the board, then try again")
+
+
+def clear_trip(client: Client, beat: Beat, name: str | None) -> str | None:
+    """Clear the latched trip if it is the one that is named; its name, or None when there is none.
+
+    Raises Tripped, naming what is latched and how to clear it.
+    """
+    if beat.state != "tripped":
+        return None
+    code = beat.fields["trip_code"]
+    latched = trips.name(code)
+    words = trips.WORDS.get(code)
+    if name != latched:
+        raise Tripped(
+            f"a trip is latched: {words.what if words else latched}", at=client.port.name,
+            got=latched, bound="no trip" if name is None else f"the trip named, {name}",
+            try_=f"{words.next if words else 'find its cause'}; then add --clear {latched}")
+    client.command("clear", code=code, trip_serial=beat.fields["trip_serial"])
+    return latched
+
+
+def load(client: Client, rig: Rig, program: Program, every_ticks: int) -> None:
+    """Limits and program onto the board, live samples every so many ticks."""
+    from ..rig import limits_blob
+
+    blob, crc32 = limits_blob(rig)
+    client.send_limits(blob, crc32, rig.fingerprint)
+    client.send_program(program.records, program.crc32, rig.fingerprint)
+    client.command("stream", every_ticks=every_ticks)
+
+
+def start(client: Client, rig: Rig, program: Program, token: int, before: int = 0,
+          last: int = 0) -> None:
+    """Arm and go: cycles count from before + 1; last ends the program once it is complete."""
+    client.command("arm", fingerprint=rig.fingerprint, program_crc32=program.crc32)
+    client.command("go", run_token=token, cycles_before=before, last_cycle=last)
+
+
+HOST_SILENT = trip_table.TABLE[trip_table.HOST_SILENT][0]
