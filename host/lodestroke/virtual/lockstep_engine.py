@@ -69,10 +69,14 @@ class VirtualEngine:
         """Serve one exchange. Raises PortLost when the interpreter has ended."""
         while (request := self._request()).kind == channel.RESET:
             self.reboot()
+        assert self._board is not None
+        if request.kind == channel.RELEASE:          # last bytes; the interpreter ends next
+            self.lockstep.board_sent(request.tx)
+            self._board.channel.answer()
+            return
         counts, rx = self.lockstep.exchange(
             request.duty_a, request.duty_b, request.enable, request.tx
         )
-        assert self._board is not None
         self._board.channel.answer(counts, self.lockstep.inputs, rx)
 
     def _request(self) -> channel.Request:

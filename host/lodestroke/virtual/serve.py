@@ -129,7 +129,7 @@ def ended_by_signals() -> Iterator[Callable[[Relay], None]]:
 
 
 def serve(config: BoardConfig, ready: Callable[[Relay], None], parent_fd: int = -1) -> None:
-    """Build a board, say that it is ready, serve until told to end. The work folder goes with it."""
+    """Build a board, say that it is ready, serve until told to end. Its work folder goes too."""
     try:
         with ended_by_signals() as end_with_signals:
             relay = build_relay(config)

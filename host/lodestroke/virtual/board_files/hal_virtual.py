@@ -158,7 +158,10 @@ class LockstepHal(VirtualHal):
         return True
 
     def own_port(self, owned):
-        """Nobody else wants it."""
+        """Nobody else wants it; what was written last still has to go out."""
+        if not owned:
+            wires.ask(wires.RELEASE, 0, 0, 0, self.n_tx)
+            self.n_tx = 0
 
 
 def open_hal(config):

@@ -14,6 +14,7 @@ board = Board(hal, unhexlify(os.getenv("LODESTROKE_BUNDLE") or "00" * 8))
 board.boot()
 loop = Loop(board)
 loop.run()
+hal.own_port(False)
 if loop.service.reset_wanted:
     hal.reset()
 sys.exit(0)
