@@ -143,14 +143,13 @@ def _interlocks(console: Console, rows: list[dict[str, Any]]) -> None:
     from rich.table import Table
 
     table = Table(title="Margin of each pressure trip to a valve's collapse", title_justify="left",
-                  box=None, padding=(0, 2))
-    table.add_column("")
+                  box=None, padding=(0, 1))
+    for head in ("", "collapse", "at trip", "sensor", "doubt", "overshoot", "margin"):
+        table.add_column(head, justify="right" if head else "left")
     for row in rows:
-        table.add_column(row["interlock"].replace("_", " "), justify="right")
-    for name in rows[0]:
-        if name != "interlock":
-            cells = [labelled(name, row[name]) for row in rows]
-            table.add_row(cells[0][0], *(text for _, text in cells))
+        names = ("collapse_pa", "reverse_at_hard_pa", "sensor_pa", "collapse_doubt_pa",
+                 "overshoot_pa", "margin_pa")
+        table.add_row(row["interlock"].replace("_", " "), *(labelled(n, row[n])[1] for n in names))
     console.print(table)
     if any(row["margin_pa"] < 0.0 for row in rows):
         console.print("Below zero: not shown by calculation; a dry-run shows what happens.")

@@ -1,0 +1,254 @@
+"""`endure`: an endurance plan on a board, over minutes or days, as one run that can be resumed.
+
+Between check-ups the board runs segments on its own. Everything needed to carry on is on disk with
+each flush: which board (boot nonce), which GO (run token), which phase. A killed host comes back with
+resume=True, takes what the board still holds, adopts a segment that still runs, and goes on.
+"""
+
+from __future__ import annotations
+
+import math
+import time
+from collections.abc import Callable
+from dataclasses import dataclass, field
+from typing import TYPE_CHECKING, Any
+
+from .. import trips
+from ..errors import LinkError, LodestrokeError
+from ..link import Client, open_port
+from ..logbook import Logbook, Writer, new_run, reader
+from . import record, session
+from .checkup import due_items, run_checkups, stop_rule
+from .collect import FLUSH_S, Collector, Outcome, fetch_recorder
+from .leftovers import drain, put, settle
+from .pick import resumable
+from .signals import StopFlag
+
+if TYPE_CHECKING:
+    from ..rig import Rig
+    from ..schedule import Plan, Schedule
+
+EVERY_TICKS = 20
+
+
+@dataclass
+class Bench:
+    """What an endurance run works with, all the way through."""
+
+    logbook: Logbook
+    writer: Writer
+    client: Client
+    rig: Rig
+    plan: Plan
+    schedule: Schedule
+    bundle_id: bytes
+    say: Callable[[str], None]
+    progress: Callable[[Outcome], None]
+    flag: StopFlag
+    done: int = 0
+    segment: int = 0
+    trips: list[dict[str, int]] = field(default_factory=list)
+
+    def stop(self) -> str:
+        """Why a running program should be stopped now; empty for no reason."""
+        if self.flag.raised:
+            return "interrupted"
+        return "stop requested" if reader.stop_requested(self.logbook, self.writer.run) else ""
+
+    def remember(self, token: int, phase: str) -> None:
+        """Put on disk what a resume needs, before the board is told to go."""
+        info = self.client.info
+        assert info is not None
+        self.segment += 1
+        self.writer.begin(info.boot_nonce, self.client.saved_entry, self.segment)
+        self.writer.resume_state({
+            "nonce": info.boot_nonce, "token": token, "phase": phase, "segment": self.segment,
+            "base": self.done, "at": time.time(), "kind": "endure"})
+        self.writer.flush()
+
+
+def endure(logbook: Logbook, rig: Rig, plan: Plan, schedule: Schedule, port: str, bundle_id: bytes,
+           *, resume: bool = False, clear: str | None = None,
+           say: Callable[[str], None] = lambda text: None,
+           progress: Callable[[Outcome], None] = lambda outcome: None) -> dict[str, Any]:
+    """Run a plan to its target, or resume the newest run of it that is open; the run's summary.
+
+    Raises LodestrokeError of every kind; what was pumped is on record first.
+    """
+    client = Client(open_port(port, dtr=rig.board.port.dtr))
+    try:
+        run_id = resumable(logbook, rig, plan) if resume else None
+        state = reader.run(logbook, run_id)["resume"] if run_id else {}
+        info = client.hello()
+        session.check_board(info, bundle_id, port)
+        if run_id is None:
+            run_id = _new(logbook, rig, plan, port, bundle_id, info.board_id)
+        with Writer(logbook, run_id) as writer, StopFlag() as flag:
+            bench = Bench(logbook, writer, client, rig, plan, schedule, bundle_id, say, progress, flag)
+            return _guarded(bench, state, resume, clear)
+    finally:
+        client.close()
+
+
+def _new(logbook: Logbook, rig: Rig, plan: Plan, port: str, bundle_id: bytes,
+         board_id: bytes) -> str:
+    files = {"plan": plan.source, "schedule": plan.schedule}
+    sources = record.sources_of(rig, **files)
+    meta = record.describe(rig, sources, files, bundle_id, board_id)
+    meta["target_cycles"] = plan.target_cycles
+    return new_run(logbook, "endure", title=plan.title, place=port, meta=meta, sources=sources)
+
+
+def _guarded(bench: Bench, state: dict[str, Any], resume: bool, clear: str | None) -> dict[str, Any]:
+    """The run itself; however it ends, its row says how."""
+    try:
+        end = _resume(bench, state, clear) if resume else _first(bench, clear)
+        while not end:
+            end = _next_stretch(bench)
+    except LodestrokeError as fault:
+        _close(bench, fault.what)
+        raise
+    return _close(bench, end)
+
+
+def _first(bench: Bench, clear: str | None) -> str:
+    settle(bench.logbook, bench.client, drain(bench.client), bench.say)
+    session.clear_trip(bench.client, session.look(bench.client), clear)
+    return ""
+
+
+def _resume(bench: Bench, state: dict[str, Any], clear: str | None) -> str:
+    """Take up a run where disk and board say that it is; why it ended, if it has."""
+    writer, client = bench.writer, bench.client
+    reader.clear_requests(bench.logbook, writer.run)
+    writer.resumed()
+    bench.done = reader.last_cycle(bench.logbook, writer.run)
+    bench.segment = state.get("segment", 0)
+    info = client.info
+    assert info is not None
+    ours = state.get("nonce") == info.boot_nonce and state.get("token") == info.run_token
+    writer.begin(info.boot_nonce, client.saved_entry, bench.segment)
+    if ours:
+        end = _adopt(bench, state)
+    else:
+        end = _restarted_meanwhile(bench, state)
+    beat = session.look(client)
+    if beat.state == "tripped":
+        name = trips.name(beat.fields["trip_code"])
+        session.clear_trip(client, beat, session.HOST_SILENT if name == session.HOST_SILENT else clear)
+        writer.note(f"trip {name} cleared on resume")
+    bench.say(f"resuming {writer.run} after cycle {bench.done}")
+    return end
+
+
+def _adopt(bench: Bench, state: dict[str, Any]) -> str:
+    """The board is the one we left: take what it holds; stay with a segment that still runs."""
+    client, writer = bench.client, bench.writer
+    beat = session.look(client)
+    running = beat.state in ("running", "paused", "stopping")
+    if running and state.get("phase") == "cycles":
+        bench.say(f"the board still runs: adopting it at cycle {beat.fields['cycle']}")
+        return _collect(bench, state["token"])
+    if running:
+        client.command("stop")
+        end_s = client.port.now_s() + 10.0
+        while session.look(client).state not in ("safe", "tripped") and client.port.now_s() < end_s:
+            client.poll(0.1)
+    elif beat.state == "armed":
+        client.command("disarm")
+    put(writer, drain(client))
+    client.saved(writer.flush())
+    bench.done = reader.last_cycle(bench.logbook, writer.run)
+    return ""
+
+
+def _restarted_meanwhile(bench: Bench, state: dict[str, Any]) -> str:
+    """The board's memory is gone, or has served somebody else: a gap, with its bound."""
+    entries = drain(bench.client)
+    settle(bench.logbook, bench.client, entries, bench.say)
+    if state.get("phase") == "cycles":
+        _gap(bench, time.time() - state.get("at", time.time()))
+    return ""
+
+
+def _gap(bench: Bench, away_s: float) -> None:
+    """A board restart: what its RAM held is lost; at most what time and host silence allowed."""
+    from ..schedule import compile_program
+
+    program = compile_program(bench.schedule, bench.rig)
+    cycle_s = program.ticks * bench.rig.board.tick / max(program.cycles, 1)
+    most_s = min(away_s, bench.rig.limits.host_silence + 2 * FLUSH_S)
+    most = min(math.ceil(most_s / cycle_s) + 1, bench.plan.target_cycles - bench.done)
+    bench.writer.gap(bench.done, "the board restarted", unnumbered_most=max(most, 0))
+    bench.writer.flush()
+    bench.say(f"the board restarted: a gap of at most {max(most, 0)} cycles after {bench.done}")
+
+
+def _next_stretch(bench: Bench) -> str:
+    """The check-ups that are due, or the cycles up to the next; why the run ends, if it does."""
+    items = due_items(bench)
+    if items:
+        end = run_checkups(bench, items)
+        return end or stop_rule(bench)
+    if bench.done >= bench.plan.target_cycles:
+        return "target reached"
+    if bench.stop():
+        return bench.stop()
+    return _cycles(bench)
+
+
+def _cycles(bench: Bench) -> str:
+    """One segment: from the cycles done to the next check-up or the target."""
+    from ..schedule import compile_program
+
+    plan = bench.plan
+    last = plan.target_cycles
+    if plan.checkup is not None:
+        every = plan.checkup.every_cycles
+        last = min(last, (bench.done // every + 1) * every)
+    passes = math.ceil((last - bench.done) / plan.cycles_per_pass)
+    program = compile_program(bench.schedule, bench.rig, passes)
+    session.load(bench.client, bench.rig, program, EVERY_TICKS)
+    token = session.new_token()
+    bench.remember(token, "cycles")
+    session.start(bench.client, bench.rig, program, token, bench.done, last)
+    return _collect(bench, token)
+
+
+def _collect(bench: Bench, token: int) -> str:
+    """Collect a segment to its end; why the whole run ends, if it does."""
+    collector = Collector(bench.client, bench.writer, token, bench.done, stop=bench.stop,
+                          progress=bench.progress)
+    outcome = collector.outcome
+    try:
+        outcome = collector.run()
+    finally:
+        bench.done = outcome.cycles_done
+        bench.trips += outcome.trips
+    if outcome.why == "restarted":
+        _gap(bench, 2 * FLUSH_S + 2.0)
+        raise LinkError(
+            "the board restarted in the middle of the run", at=bench.client.port.name,
+            got="a new boot nonce", bound="a board that stays powered",
+            try_="look at its supply; then endure --resume")
+    if outcome.why == "tripped":
+        fetch_recorder(bench.client, bench.writer, outcome)
+        return "tripped: " + trips.name(outcome.trips[-1]["code"]) if outcome.trips else "tripped"
+    return outcome.asked_to_stop
+
+
+def _close(bench: Bench, end: str) -> dict[str, Any]:
+    run_id = bench.writer.run
+    bench.writer.flush()
+    row = reader.run(bench.logbook, run_id)
+    summary = {
+        "run": run_id, "target_cycles": bench.plan.target_cycles,
+        "cycles_done": reader.last_cycle(bench.logbook, run_id), "resumes": row["resumes"],
+        "trips": [trips.as_json(trip) for trip in reader.trips(bench.logbook, run_id)],
+        "gaps": [{key: gap[key] for key in
+                  ("after_cycle", "first_cycle", "last_cycle", "unnumbered_most", "why")}
+                 for gap in reader.gaps(bench.logbook, run_id)],
+        "checkups": len(reader.checkups(bench.logbook, run_id)), "end": end,
+    }
+    bench.writer.finish(end, summary)
+    return summary
