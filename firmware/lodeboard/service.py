@@ -71,6 +71,8 @@ class Service:
     def poll(self) -> None:
         """Take a few octets, send at most two frames."""
         for _ in range(_RX_BYTES):
+            if self.board.released:  # type: ignore[attr-defined]
+                break              # what comes now is for the prompt
             octet = self.hal.read_byte()
             if octet < 0:
                 break
