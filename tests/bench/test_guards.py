@@ -1,11 +1,12 @@
-"""What a virtual board does when its processor hangs or the host goes: deadman, watchdog, silence."""
+"""What a virtual board does when its processor hangs, its power goes, a hand stops it."""
 
 from __future__ import annotations
 
 from collections.abc import Iterator
 
 import pytest
-from boards import RIG, ROOT, hello, until
+from boards import RIG, ROOT, hello, mpremote, until
+
 from lodestroke.flash import board_image
 from lodestroke.link import Beat, Client, open_port
 from lodestroke.rig import limits_blob, load_rig
@@ -25,7 +26,8 @@ def board() -> Iterator[VirtualBoard]:
 def running(board: VirtualBoard) -> Client:
     """A client of a board that runs the gentle schedule with its driver enabled."""
     rig = load_rig(RIG)
-    program = compile_program(load_schedule(ROOT / "hil_configs" / "schedules" / "gentle.toml"), rig)
+    gentle = ROOT / "hil_configs" / "schedules" / "gentle.toml"
+    program = compile_program(load_schedule(gentle), rig)
     client = Client(open_port(board.port))
     client.hello()
     client.send_limits(*limits_blob(rig), rig.fingerprint)
@@ -92,3 +94,22 @@ def test_ctrl_c_on_the_link_stops_the_run_and_gives_the_prompt(board: VirtualBoa
     until(lambda: not board.status()["owned"])
     client.close()
     assert not board.status()["enabled"]
+
+
+def test_the_prompt_stays_after_a_run_for_as_long_as_it_is_needed(board: VirtualBoard) -> None:
+    """The watchdog, once started, must not cut off whoever works at the prompt."""
+    client = running(board)
+    client.command("stop")
+    client.close()
+    until(lambda: not board.status()["enabled"])
+    assert mpremote(board.port, "exec", "import time; time.sleep(3.5); print('still here')")
+    assert board.status()["launches"] <= 2
+
+
+def test_the_maintenance_command_gives_the_port_to_mpremote(board: VirtualBoard) -> None:
+    client = Client(open_port(board.port))
+    client.hello()
+    client.command("maintain")
+    client.close()
+    until(lambda: not board.status()["owned"])
+    assert mpremote(board.port, "resume", "exec", "print('prompt')") == "prompt\n"

@@ -203,6 +203,8 @@ class Relay:
         elif request.kind in (channel.OWN, channel.RELEASE):
             self._from_inner()
             self._owned = request.kind == channel.OWN
+            # unlike a real one, this watchdog can be stopped: nobody feeds it at the prompt
+            self.guard = Guard()
         elif request.kind == channel.RESET:
             self.cut("reset")
             return

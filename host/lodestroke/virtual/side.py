@@ -8,16 +8,23 @@ from __future__ import annotations
 import json
 import os
 import socket
+import tempfile
 from collections.abc import Callable
 from typing import Any
 
 from ..errors import PortLost
+
+_PATH_MAX = 100        # the system's bound for a socket's name is 103 to 107 bytes
 
 
 class SideChannel:
     """The relay's end. Each connection carries one command."""
 
     def __init__(self, path: str, act: Callable[[str, list[str]], dict[str, Any]]) -> None:
+        self._folder = ""
+        if len(os.fsencode(path)) > _PATH_MAX:
+            self._folder = tempfile.mkdtemp(prefix="lodestroke-", dir="/tmp")
+            path = self._folder + "/side"
         self.path = path
         self._act = act
         self._socket = socket.socket(socket.AF_UNIX, socket.SOCK_STREAM)
@@ -43,6 +50,8 @@ class SideChannel:
         self._socket.close()
         if os.path.exists(self.path):
             os.unlink(self.path)
+        if self._folder:
+            os.rmdir(self._folder)
 
 
 def ask(path: str, command: str) -> dict[str, Any]:
