@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from typing import Any
+from typing import Any, NamedTuple
 
 from ..plant.slug import air_spring
 from ..rig.limits_blob import per_count
@@ -12,6 +12,17 @@ from ..rig.models_sensors import PressureSensor
 from ..schedule.bounds import slew_time
 
 _K = 2.0                 # coverage factor of stated uncertainties (GUM, about 95 %)
+
+
+class Guard(NamedTuple):
+    """An interlock that keeps a valve from collapse."""
+
+    name: str
+    collapse_pa: float
+    reverse_pa: float          # across the valve when the hard limit is reached
+    driving_pa: float          # what can drive it further
+    per_s: float               # rate constant of that
+    sensors: list[PressureSensor]
 
 
 def sensor_table(rig: Rig) -> dict[str, dict[str, float]]:
@@ -65,7 +76,6 @@ def interlock_margins(rig: Rig, push_pa: float) -> list[dict[str, Any]]:
     into_outlet = sum(valve.resistance for valve in rig.valves.outlet) * rig.outlet.compliance
     chamber, outlet = rig.sensors.chamber, rig.sensors.outlet
     inlet_sensor = [] if rig.sensors.inlet is None else [rig.sensors.inlet]
-    # interlock, collapse, reverse at the hard limit, what drives it, rate constant, sensors
     rows = (
         ("outlet_reverse", outlet_valve, limits.outlet_reverse.hard, back, omega,
          [outlet, chamber]),
@@ -77,23 +87,21 @@ def interlock_margins(rig: Rig, push_pa: float) -> list[dict[str, Any]]:
         ("outlet_high", outlet_valve, limits.outlet_high.hard - inlet, push_pa, 1.0 / into_outlet,
          [outlet]),
     )
-    return [_row(rig, *row) for row in rows]
+    return [_row(rig, Guard(*row)) for row in rows]
 
 
-def _row(
-    rig: Rig, name: str, collapse: float, hard: float, drive: float, per_s: float,
-    sensors: list[PressureSensor],
-) -> dict[str, Any]:
+def _row(rig: Rig, guard: Guard) -> dict[str, Any]:
     """The rate of rise is what is left to drive it, times the rate constant."""
-    rate = max(0.0, drive - hard) * per_s
-    uncertainty = _K * math.hypot(*(sensor.uncertainty for sensor in sensors))
-    doubt = _K * rig.tolerances.collapse * collapse
-    delay = reaction_s(rig, *(sensor.lag for sensor in sensors))
+    rate = max(0.0, guard.driving_pa - guard.reverse_pa) * guard.per_s
+    uncertainty = _K * math.hypot(*(sensor.uncertainty for sensor in guard.sensors))
+    doubt = _K * rig.tolerances.collapse * guard.collapse_pa
+    delay = reaction_s(rig, *(sensor.lag for sensor in guard.sensors))
     return {
-        "interlock": name, "collapse_pa": collapse, "reverse_at_hard_pa": hard,
-        "driving_pa": drive, "sensor_pa": uncertainty, "collapse_doubt_pa": doubt,
+        "interlock": guard.name, "collapse_pa": guard.collapse_pa,
+        "reverse_at_hard_pa": guard.reverse_pa, "driving_pa": guard.driving_pa,
+        "sensor_pa": uncertainty, "collapse_doubt_pa": doubt,
         "reaction_s": delay, "rate_pa_s": rate, "overshoot_pa": rate * delay,
-        "margin_pa": collapse - hard - uncertainty - doubt - rate * delay,
+        "margin_pa": guard.collapse_pa - guard.reverse_pa - uncertainty - doubt - rate * delay,
     }
 
 

@@ -17,7 +17,7 @@ _POLE = 0.7              # closed loop: 30 % of an error is gone after each tick
 
 
 def heat_values(rig: Rig) -> dict[str, int]:
-    """Two-node coefficients of the hotter coil, rounded so that the estimate is never too cool."""
+    """Two-node coefficients of the hotter coil, rounded so that the estimate is rather warm."""
     coil = hotter_coil(rig)
     step_s = THERMAL_EVERY * rig.board.tick
     limits = rig.limits
@@ -27,14 +27,23 @@ def heat_values(rig: Rig) -> dict[str, int]:
         "hot_hard_mc": math.floor(limits.coil_temperature.hard * 1000),
         "r20_mohm": math.ceil(coil.resistance * 1000),
         "alpha_ppm": round(coil.temperature_coefficient * 1e6),
-        "heat_winding_q": math.ceil(step_s / coil.winding_heat * 16384),
-        "heat_leak_winding_q": math.floor(
-            step_s / (coil.winding_to_body * coil.winding_heat) * 65536),
-        "heat_leak_body_q": math.ceil(step_s / (coil.winding_to_body * coil.body_heat) * 65536),
-        "heat_body_leak_q": math.floor(step_s / (coil.body_to_air * coil.body_heat) * 65536),
+        "heat_winding_q": _whole(step_s / coil.winding_heat * 16384, 1),
+        "heat_leak_winding_q": _whole(
+            step_s / (coil.winding_to_body * coil.winding_heat) * 65536, -1),
+        "heat_leak_body_q": _whole(
+            step_s / (coil.winding_to_body * coil.body_heat) * 65536, 1),
+        "heat_body_leak_q": _whole(step_s / (coil.body_to_air * coil.body_heat) * 65536, -1),
     }
     _check_heat(rig, values)
     return values
+
+
+def _whole(value: float, warm: int) -> int:
+    """A coefficient as an integer: the nearest when that is within 1 %, else the warmer one."""
+    near = round(value)
+    if abs(near - value) <= 0.01 * value:
+        return near
+    return math.ceil(value) if warm > 0 else math.floor(value)
 
 
 def hotter_coil(rig: Rig) -> Coil:
