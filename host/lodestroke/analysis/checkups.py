@@ -19,7 +19,7 @@ if TYPE_CHECKING:
 Result = dict[str, Any]
 K_COPPER = 235.0            # IEC 60034-1 resistance method
 U_STATED_SUPPLY = 0.01      # relative, of a supply that is stated and not measured; our assumption
-_SMOOTH = 9                 # ticks in a running mean: steadies noise, short against a slow ramp
+_SMOOTH = 3                 # ticks in a running mean: steadies noise, short against a valve's opening
 _UL = 1e9
 
 
@@ -82,14 +82,14 @@ def stroke_volume(rows: np.ndarray, rig: Rig) -> Result:
     """
     tick_s = rig.board.tick
     on = rows["target_a_ma"] > 0
-    starts = np.flatnonzero(on[1:] & ~on[:-1]) + 1
+    starts = np.flatnonzero(on & ~np.append(False, on[:-1]))
     ends = np.append(starts[1:], len(rows))
     pressure = rows["outlet_pa"].astype(float)
     volumes = []
     for start, end in zip(starts, ends, strict=True):
         if end - start < 40:
             continue
-        before = pressure[max(start - 20, 0) : start].mean()
+        before = pressure[max(start - 20, 0) : max(start, 3)].mean()
         after = pressure[end - 20 : end].mean()
         through = (pressure[start:end] - rig.outlet.head).sum() * tick_s / rig.outlet.restriction
         # what already ran out because the vessel stood above its head is no part of the stroke

@@ -83,7 +83,8 @@ def _write(folder: Path, shown: Any, rig: Any) -> list[Path]:
         table = pa.table({name: shown.samples[name] for name in shown.samples.dtype.names})
         samples = folder / "samples.csv"
         pa.csv.write_csv(table, str(samples))
-        return [answer, samples, dry_run_page(shown, rig, folder / "dry-run.html")]
+        return [answer, samples, dry_run_page(
+            shown.result, shown.samples, shown.cycles, rig, folder / "dry-run.html")]
     except OSError as fault:
         raise CannotWrite(folder, fault) from fault
 
