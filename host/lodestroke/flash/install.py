@@ -301,15 +301,14 @@ def _reopened(port_name: str) -> Port:
 def _hello(port: Port) -> BoardInfo:
     """Wait for the package to come up. Raises FlashError with what the board printed instead."""
     end = time.monotonic() + _BACK_S
-    while time.monotonic() < end:
-        if greet(port, _GREET_S) is not None:
-            return Client(port).hello()
-    said = Client(port)
-    try:
-        return said.hello()
-    except LinkTimeout as silent:
-        raise FlashError(
-            "the board does not answer after the restart", at=port.name, got=silent.got,
-            bound=f"a hello within {_BACK_S:g} s",
-            try_="look at what it prints: mpremote connect PORT repl",
-        ) from silent
+    client = Client(port)
+    while True:
+        try:
+            return client.hello()
+        except LinkTimeout as silent:
+            if time.monotonic() > end:
+                raise FlashError(
+                    "the board does not answer after the restart", at=port.name, got=silent.got,
+                    bound=f"a hello within {_BACK_S:g} s",
+                    try_="look at what it prints: mpremote connect PORT repl",
+                ) from silent

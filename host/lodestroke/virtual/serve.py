@@ -63,6 +63,8 @@ def _bench(config: BoardConfig) -> tuple[Bench, str, int]:
         )
     heap = int(getattr(rig.board, "heap", None) or HEAP_KIB * 1024)
     serial = getattr(rig.board, "serial", None) or "virtual"
+    # compiled before anybody waits for an answer, on a plant of its own
+    Plant.from_rig(rig, config.seed).step(0, 0, 0)
     return Lockstep(Plant.from_rig(rig, config.seed)), serial, heap // 1024
 
 
