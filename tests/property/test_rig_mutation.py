@@ -19,6 +19,45 @@ RIGS = sorted(CONFIGS.glob("*.toml"))
 SCHEDULES = sorted((CONFIGS / "schedules").glob("*.toml"))
 PLANS = sorted((CONFIGS / "plans").glob("*.toml"))
 FOLDER = Path(tempfile.mkdtemp(prefix="mutated-"))
+RICH = """
+[waves.both]
+rate = "2 Hz"
+duty = "40 %"
+current = "1 A"
+rise = "20 ms"
+coil_b = { current = "0.5 A", phase = "90 deg" }
+[waves.times]
+rise = "20 ms"
+hold = "100 ms"
+fall = "20 ms"
+rest = "200 ms"
+[[steps]]
+name = "outer"
+times = 2
+limits = { outlet_high = "18 cmH2O", current = "2 A" }
+  [[steps.steps]]
+  wave = "both"
+  cycles = 3
+  coil_b = { current = "0 A" }
+  [[steps.steps]]
+  times = 2
+    [[steps.steps.steps]]
+    wave = "times"
+    duration = "2 s"
+    current = "0.8 A"
+    limits = { coil_temperature = "80 degC" }
+    [[steps.steps.steps]]
+    mark = 3
+[[steps]]
+ramp = { to = "1 A", over = "2 s" }
+[[steps]]
+hold = { current = "1 A", time = "1 s" }
+mark = 9
+[[steps]]
+rest = "1 s"
+"""
+(FOLDER / "rich.toml").write_text(RICH, encoding="utf-8")
+SCHEDULES.append(FOLDER / "rich.toml")
 
 VALUES = [
     "", '""', '"', "0", "-1", "1e400", "nan", "inf", "-inf", "true", "[]", "{}", "[[1], [2]]",
@@ -129,6 +168,11 @@ def test_plan_file_gives_a_clear_error_or_loads_when_mutated(
         load_plan(mutated(source, changes))
     except ScheduleError as err:
         assert_clear(err)
+
+
+def test_rich_schedule_compiles_as_it_stands() -> None:
+    # 2 times (3 strokes and 2 times 2 s of 0.34 s strokes, 6 after rounding)
+    assert compile_program(load_schedule(FOLDER / "rich.toml"), rig()).cycles == 30
 
 
 @pytest.mark.parametrize("make", ["missing", "folder", "binary", "nul name"])

@@ -6,6 +6,7 @@ Serves rigs, schedules and plans alike: each with its own kind of error.
 from __future__ import annotations
 
 import difflib
+import operator
 import sys
 from collections.abc import Callable, Iterable, Iterator
 from dataclasses import dataclass, field
@@ -147,7 +148,7 @@ def read_fields(model: type[BaseModel], document: Document) -> dict[str, Any]:
 def _annotated(annotation: Any, metadata: list[Any]) -> Any:
     """A field's type with its metadata, as it was written in the model."""
     parts = (annotation, *metadata)
-    return Annotated.__class_getitem__(parts) if metadata else annotation  # type: ignore[attr-defined]
+    return operator.getitem(Annotated, parts) if metadata else annotation
 
 
 def _problem(name: str, model: type[BaseModel], error: ErrorDetails, data: Any) -> Problem:

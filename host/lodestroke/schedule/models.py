@@ -121,27 +121,27 @@ class NestedStep(StepBase):
 
 
 def step_kind(value: Any) -> str:
-    """Which step a table means, by the keys that it holds."""
+    """Which step a table means, by the keys that it holds. Tags must not look like keys."""
     if isinstance(value, StepBase):
-        return {NestedStep: "steps", RampStep: "ramp", HoldStep: "hold", RestStep: "rest",
-                MarkStep: "mark"}.get(type(value), "wave")
+        return {NestedStep: "<steps>", RampStep: "<ramp>", HoldStep: "<hold>", RestStep: "<rest>",
+                MarkStep: "<mark>"}.get(type(value), "<wave>")
     if not isinstance(value, dict):
-        return "wave"
+        return "<wave>"
     if "steps" in value:
-        return "steps"
+        return "<steps>"
     if "wave" in value or "cycles" in value or "duration" in value:
-        return "wave"
+        return "<wave>"
     for kind in ("ramp", "hold", "rest"):
         if kind in value:
-            return kind
+            return f"<{kind}>"
     only_mark = "mark" in value and not set(value) - {"mark", "name", "limits"}
-    return "mark" if only_mark else "wave"
+    return "<mark>" if only_mark else "<wave>"
 
 
 Step = Annotated[
-    Annotated[WaveStep, Tag("wave")] | Annotated[RestStep, Tag("rest")]
-    | Annotated[RampStep, Tag("ramp")] | Annotated[HoldStep, Tag("hold")]
-    | Annotated[MarkStep, Tag("mark")] | Annotated[NestedStep, Tag("steps")],
+    Annotated[WaveStep, Tag("<wave>")] | Annotated[RestStep, Tag("<rest>")]
+    | Annotated[RampStep, Tag("<ramp>")] | Annotated[HoldStep, Tag("<hold>")]
+    | Annotated[MarkStep, Tag("<mark>")] | Annotated[NestedStep, Tag("<steps>")],
     Discriminator(step_kind),
 ]
 NestedStep.model_rebuild()
