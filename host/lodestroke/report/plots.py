@@ -109,7 +109,7 @@ def flow(cycles: list[dict[str, Any]], rig: Rig) -> go.Figure:
     value, u = account.flow_ul_per_min(cycles, rig)
     figure.add_trace(go.Scatter(
         x=np.concatenate([x, x[::-1]]), y=np.concatenate([value + 2 * u, (value - 2 * u)[::-1]]),
-        fill="toself", fillcolor="rgba(27,108,168,0.15)", line={"width": 0}, hoverinfo="skip",
+        mode="lines", fill="toself", fillcolor="rgba(27,108,168,0.15)", line={"width": 0}, hoverinfo="skip",
         name="± 2 u"))
     _line(figure, x, value, "flow", "flow")
     return figure
@@ -136,5 +136,5 @@ def heat_and_hold(cycles: list[dict[str, Any]]) -> go.Figure:
     figure.add_trace(go.Bar(x=x, y=100.0 * held, name="held back", yaxis="y2", opacity=0.5,
                             marker={"color": _COLOURS["held"]}))
     figure.update_layout(yaxis2={"title": "ticks held back / %", "overlaying": "y", "side": "right",
-                                 "range": [0, 100], "showgrid": False}, margin={"r": 70})
+                                 "range": [0, 100], "showgrid": False, "tickmode": "linear", "dtick": 20}, margin={"r": 70})
     return figure
