@@ -9,6 +9,10 @@ import json
 import os
 import sys
 
+TYPE_CHECKING = False
+if TYPE_CHECKING:
+    Pointer = tuple[int, str, int, str, int]
+
 SLOTS = ("slot_a", "slot_b")
 GOOD = -1
 NONE = "-"
@@ -17,17 +21,17 @@ _COPIES = ("/pointer.0", "/pointer.1")
 _FLAG = "/maintain"
 
 
-def _parse(line):
+def _parse(line: str) -> "Pointer | None":
     words = line.split()
     if len(words) != 6 or binascii.crc32(" ".join(words[:5]).encode()) != int(words[5]):
         return None
-    return [int(words[0]), words[1], int(words[2]), words[3], int(words[4])]
+    return int(words[0]), words[1], int(words[2]), words[3], int(words[4])
 
 
-def _copies():
-    found = []
+def _copies() -> "list[Pointer | None]":
+    found: "list[Pointer | None]" = []
     for name in _COPIES:
-        row = None
+        row: "Pointer | None" = None
         try:
             with open(name) as file:
                 row = _parse(file.read())
@@ -37,20 +41,20 @@ def _copies():
     return found
 
 
-def read():
-    """[sequence, slot, left, back, window_ms] of the newer whole copy, or None."""
+def read() -> "Pointer | None":
+    """(sequence, slot, left, back, window_ms) of the newer whole copy, or None."""
     first, second = _copies()
     if first and (not second or first[0] > second[0]):
         return first
     return second
 
 
-def text(sequence, slot, left, back, window_ms):
+def text(sequence: int, slot: str, left: int, back: str, window_ms: int) -> str:
     line = "%d %s %d %s %d" % (sequence, slot, left, back, window_ms)
     return "%s %d\n" % (line, binascii.crc32(line.encode()))
 
 
-def write(slot, left, back, window_ms=None):
+def write(slot: str, left: int, back: str, window_ms: "int | None" = None) -> None:
     """Point to a slot. Goes over the older copy; the other stays whole until this one is."""
     first, second = _copies()
     newest = read()
@@ -62,12 +66,12 @@ def write(slot, left, back, window_ms=None):
         file.write(text(sequence, slot, left, back, window_ms))
 
 
-def window_ms():
+def window_ms() -> int:
     row = read()
     return row[4] if row else WINDOW_MS
 
 
-def maintenance():
+def maintenance() -> bool:
     """Whether a reset into the prompt was asked for; asked for once, granted once."""
     try:
         os.remove(_FLAG)
@@ -76,9 +80,9 @@ def maintenance():
     return True
 
 
-def sums(folder):
+def sums(folder: str) -> "dict[str, str]":
     """SHA-256 of every file below a folder, by its path from there."""
-    found = {}
+    found: "dict[str, str]" = {}
     waiting = [""]
     buffer = bytearray(512)
     while waiting:
@@ -92,7 +96,7 @@ def sums(folder):
     return found
 
 
-def _sum(path, buffer):
+def _sum(path: str, buffer: bytearray) -> str:
     digest = hashlib.sha256()
     with open(path, "rb") as file:
         while True:
@@ -102,7 +106,7 @@ def _sum(path, buffer):
             digest.update(memoryview(buffer)[:n])
 
 
-def damaged(slot):
+def damaged(slot: str) -> "list[str]":
     """Files that are not what the package's manifest says; ["manifest.json"] without one."""
     try:
         with open("/" + slot + "/manifest.json") as file:
@@ -113,7 +117,7 @@ def damaged(slot):
     return [name for name in wanted if found.get(name) != wanted[name]]
 
 
-def start():
+def start() -> None:
     """Run the package that the pointer names, or the one before it; returns for the prompt."""
     row = read()
     if row is None:
@@ -133,7 +137,7 @@ def start():
         _run(back)
 
 
-def _run(slot):
+def _run(slot: str) -> bool:
     """True when the package ran and gave the port back; False when it could not be started."""
     bad = damaged(slot)
     if bad:
@@ -154,7 +158,7 @@ def _run(slot):
     return False
 
 
-def prove():
+def prove() -> None:
     """The package has run well for its first second: no trial, no way back needed."""
     row = read()
     if row and row[2] != GOOD:

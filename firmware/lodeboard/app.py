@@ -68,6 +68,6 @@ def run(folder: str, prove: "Callable[[], None]") -> None:
         raise
     finally:
         hal.drive(0, 0, 0)
+        if loop.service.reset_wanted:
+            hal.reset()                # before own_port, which on metal may be a reset of its own
         hal.own_port(False)
-    if loop.service.reset_wanted:
-        hal.reset()

@@ -24,8 +24,8 @@ BOARDS = {
 CONFIG = """\
 [mypy]
 strict = True
-files = {firmware}/lodeboard
-mypy_path = {stubs}:{firmware}
+files = {firmware}/lodeboard, {firmware}/boot
+mypy_path = {stubs}:{firmware}:{firmware}/boot
 custom_typeshed_dir = {stubs}
 python_version = 3.11
 cache_dir = {cache}

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import binascii
 import json
 import tempfile
 import time
@@ -17,74 +18,12 @@ from ..link import BoardInfo, Client, Port, open_port
 from ..link.decode import pack_down, unpack_up
 from .bundle import BOOT_WINDOW_MS, GOOD, SLOTS, Bundle, build_bundle, sha256
 from .mpremote import Mpremote
+from .snippets import CLEAR, PROBE, SUMS
 
 _TRIES_OF_A_NEW_SLOT = 2
 _GREET_S = 0.4
 _BACK_S = 12.0          # window, import and start of a slow board
 _COPY_LIMIT_S = 120.0
-
-# Snippets for the board. Each prints one line of JSON and needs nothing but the boot files.
-_PROBE = """
-import json, os, sys
-def size(name):
-    try:
-        os.stat(name)
-        return 1
-    except OSError:
-        return 0
-def text(name):
-    try:
-        with open(name) as f:
-            return f.read()
-    except OSError:
-        return ""
-print(json.dumps({"name": sys.implementation[0], "version": list(sys.implementation[1][:3]),
- "machine": getattr(sys.implementation, "_machine", ""), "platform": sys.platform,
- "pointers": [text("pointer.0"), text("pointer.1")]}))
-"""
-
-_SUMS = """
-import binascii, hashlib, json, os
-def sums(top):
-    found = {}; todo = [""]; b = bytearray(512); v = memoryview(b)
-    while todo:
-        at = todo.pop()
-        try:
-            rows = list(os.ilistdir(top + "/" + at if at else top or "/"))
-        except OSError:
-            rows = []
-        for e in rows:
-            p = at + "/" + e[0] if at else e[0]
-            if e[1] & 0x4000:
-                if top:
-                    todo.append(p)
-                continue
-            h = hashlib.sha256()
-            with open(top + "/" + p, "rb") as f:
-                while True:
-                    n = f.readinto(b)
-                    if not n:
-                        break
-                    h.update(v[:n])
-            found[p] = binascii.hexlify(h.digest()).decode()
-    return found
-"""
-
-_CLEAR = """
-import os
-def clear(top):
-    try:
-        rows = list(os.ilistdir(top))
-    except OSError:
-        return
-    for e in rows:
-        p = top + "/" + e[0]
-        if e[1] & 0x4000:
-            clear(p)
-        else:
-            os.remove(p)
-    os.rmdir(top)
-"""
 
 
 def install(rig: Any, port_name: str, say: Callable[[str], None]) -> dict[str, Any]:
@@ -98,7 +37,7 @@ def install(rig: Any, port_name: str, say: Callable[[str], None]) -> dict[str, A
     _refuse_a_busy_board(port_name, say)
     tool = Mpremote(port_name)
     say("asking the board what it is")
-    probe = _json(tool.execute("ask the board what it is", _PROBE), "ask the board what it is")
+    probe = _json(tool.execute("ask the board what it is", PROBE), "ask the board what it is")
     _fits(probe, bundle, port_name)
     slot, back, sequence = _choose(probe["pointers"])
     say(f"copying {len(bundle.files)} files to {slot}")
@@ -180,15 +119,12 @@ def _fits(probe: dict[str, Any], bundle: Bundle, port_name: str) -> None:
 
 
 def _newest(lines: list[str]) -> tuple[int, str, int, str] | None:
-    """(sequence, slot, left, back) of the newer pointer copy; its CRC is the board's business."""
+    """(sequence, slot, left, back) of the newer whole pointer copy, as boot/slots.py reads them."""
     rows = []
     for line in lines:
         words = line.split()
-        if len(words) == 6 and words[1] in SLOTS:
-            try:
-                rows.append((int(words[0]), words[1], int(words[2]), words[3]))
-            except ValueError:
-                continue
+        if len(words) == 6 and words[5] == str(binascii.crc32(" ".join(words[:5]).encode())):
+            rows.append((int(words[0]), words[1], int(words[2]), words[3]))
     return max(rows) if rows else None
 
 
@@ -209,7 +145,7 @@ def _choose(lines: list[str]) -> tuple[str, str, int]:
 
 def _copy_slot(tool: Mpremote, bundle: Bundle, slot: str) -> None:
     """The slot emptied first: a stale module would shadow or survive."""
-    tool.execute("empty the slot", _CLEAR + f"\nclear('{slot}')", 30.0)
+    tool.execute("empty the slot", CLEAR + f"\nclear('{slot}')", 30.0)
     with tempfile.TemporaryDirectory(prefix="lodestroke-") as folder:
         for name, data in bundle.files.items():
             path = Path(folder) / slot / name
@@ -220,7 +156,7 @@ def _copy_slot(tool: Mpremote, bundle: Bundle, slot: str) -> None:
 
 def board_sums(tool: Mpremote, top: str) -> dict[str, str]:
     """SHA-256 of each file below a folder of the board ("" for the files of its root)."""
-    code = _SUMS + f"\nprint(json.dumps(sums('{top}')))"
+    code = SUMS + f"\nprint(json.dumps(sums('{top}')))"
     found: dict[str, str] = _json(tool.execute("check the sums", code, 60.0), "check the sums")
     return found
 
@@ -268,13 +204,11 @@ def _restart(tool: Mpremote, bundle: Bundle, port_name: str) -> BoardInfo:
     if bundle.kind == "virtual":
         port = open_port(port_name)
         port.write(b"\r\x03\x02\x04")       # friendly REPL, then a soft reset that runs main.py
+        info = _hello(port)
     else:
         tool.run("restart the board", ["exec", "--no-follow", "import machine;machine.reset()"], 10)
-        port = _reopened(port_name)
-    try:
-        info = _hello(port)
-    finally:
-        port.close()
+        time.sleep(1.0)                     # its port goes, and comes back
+        info = _hello(None, port_name)
     if info.bundle_id != bundle.bundle_id:
         raise FlashError(
             "the board runs other firmware than was installed", at=port_name,
@@ -285,30 +219,25 @@ def _restart(tool: Mpremote, bundle: Bundle, port_name: str) -> BoardInfo:
     return info
 
 
-def _reopened(port_name: str) -> Port:
-    """The port, once a board that resets shows it again."""
+def _hello(port: Port | None, port_name: str = "") -> BoardInfo:
+    """Wait for the package to come up, whatever its port does meanwhile. Raises FlashError."""
     end = time.monotonic() + _BACK_S
-    time.sleep(1.0)
+    name = port.name if port else port_name
     while True:
         try:
-            return open_port(port_name)
-        except PortError:
-            if time.monotonic() > end:
-                raise
-            time.sleep(0.2)
-
-
-def _hello(port: Port) -> BoardInfo:
-    """Wait for the package to come up. Raises FlashError with what the board printed instead."""
-    end = time.monotonic() + _BACK_S
-    client = Client(port)
-    while True:
-        try:
-            return client.hello()
-        except LinkTimeout as silent:
+            port = port or open_port(name)
+            info = Client(port).hello()
+            port.close()
+            return info
+        except (LinkTimeout, PortError) as silent:
+            if isinstance(silent, PortError):
+                time.sleep(0.2)
+            if port:
+                port.close()
+            port = None
             if time.monotonic() > end:
                 raise FlashError(
-                    "the board does not answer after the restart", at=port.name, got=silent.got,
+                    "the board does not answer after the restart", at=name, got=silent.got,
                     bound=f"a hello within {_BACK_S:g} s",
                     try_="look at what it prints: mpremote connect PORT repl",
                 ) from silent
