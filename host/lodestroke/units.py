@@ -50,6 +50,8 @@ _NUMBER = re.compile(
     r"\s*([-+]?(?:\d+(?:\.\d*)?|\.\d+)(?:[eE][-+]?\d{1,4})?)\s*(.*?)\s*", re.DOTALL | re.ASCII)
 _FACTOR = re.compile(r"(1|%|[A-Za-zµμΩ°_][A-Za-zµμΩ°_0-9]*)(?:(?:\^|\*\*)([-+]?\d))?")
 _SUPERSCRIPTS = {"²": "^2", "³": "^3", "⁻¹": "^-1", "·": "*", "×": "*", "−": "-", "μ": "µ"}
+_PLAIN_UNITS = {"": {"%": 0.01, "percent": 0.01},
+                "deg": {"deg": 1.0, "°": 1.0, "degree": 1.0, "rad": 180.0 / math.pi}}
 _TEXT_MAX = 60
 IN_FILE = "file"         # validation context: quantities are text with units
 
@@ -67,7 +69,7 @@ class UnitError(ValueError):
 @functools.cache
 def registry() -> UnitRegistry[Any]:
     """The one pint registry, made on first use."""
-    import pint  # noqa: PLC0415  (heavy: only when a quantity is parsed)
+    import pint
 
     return pint.UnitRegistry()
 
@@ -106,15 +108,13 @@ def _named_factor(ureg: UnitRegistry[Any], name: str) -> tuple[float, dict[str, 
     """One unit name; degC and degF count as differences here."""
     if name == "%":
         return 0.01, {}
-    if name in ("rpm", "revolutions_per_minute"):  # pint counts radians here: off by 2 pi
-        raise UnitError(f'"{name}" is ambiguous', bound="a rate in Hz or 1/min",
-                        try_='write "60 1/min"')
     name = {"°C": "degC", "Ω": "ohm", "degC": "degC"}.get(name, name)
     if name in ("degC", "degF"):
         name = "delta_" + name
     try:
         unit = ureg.parse_units(name)
-        one: Any = ureg.get_base_units(unit)[0]
+        one: Any
+        one, base = ureg.get_base_units(unit)
         powers: dict[Any, Any] = dict(unit.dimensionality)
         factor = float(one)
         dims = {str(dim): float(power) for dim, power in powers.items()}
@@ -122,6 +122,9 @@ def _named_factor(ureg: UnitRegistry[Any], name: str) -> tuple[float, dict[str, 
         near = difflib.get_close_matches(name.lower(), _lower_names(), n=1, cutoff=0.6)
         hint = f'did you mean "{_lower_names()[near[0]]}"?' if near else "see the shipped rig files"
         raise UnitError(f'unknown unit "{name}"', try_=hint) from err
+    if "radian" in str(base):        # an angle has no dimension in pint: rpm would be off by 2 pi
+        raise UnitError(f'"{name}" is an angle', bound="rates are in Hz or 1/min",
+                        try_='write "60 1/min"')
     return factor, dims
 
 
@@ -188,9 +191,15 @@ def _convert(number: float, text: str, unit: str, kind: str, names: tuple[str, .
     """number [text] in `unit`; checks the dimension."""
     if unit == "degC":
         return _celsius(number, text, names)
+    if unit in _PLAIN_UNITS:         # nothing but these: every other plain unit is a mistake
+        if text not in _PLAIN_UNITS[unit]:
+            raise UnitError(f'"{text}" is no unit of {kind}',
+                            bound=f"one of {', '.join(_PLAIN_UNITS[unit])}",
+                            try_=f"write {_example(unit)}")
+        return number * _PLAIN_UNITS[unit][text]
     try:
         factor, dims = _factor(text)
-        target, wanted = _factor(unit) if unit else (1.0, {})
+        target, wanted = _factor(unit)
         if dims != wanted:
             raise UnitError(f'"{text}" is no unit of {kind}', bound=f"a unit such as {names[0]}",
                             try_=f"write {_example(unit)}")
@@ -252,7 +261,7 @@ class Unit:
     def __get_pydantic_core_schema__(
         self, source: Any, handler: GetCoreSchemaHandler
     ) -> CoreSchema:
-        from pydantic_core import core_schema  # noqa: PLC0415  (only models need it)
+        from pydantic_core import core_schema
 
         return core_schema.with_info_before_validator_function(self._read, handler(source))
 

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import atexit
+import shutil
 import tempfile
 from pathlib import Path
 
@@ -19,6 +21,7 @@ RIGS = sorted(CONFIGS.glob("*.toml"))
 SCHEDULES = sorted((CONFIGS / "schedules").glob("*.toml"))
 PLANS = sorted((CONFIGS / "plans").glob("*.toml"))
 FOLDER = Path(tempfile.mkdtemp(prefix="mutated-"))
+atexit.register(shutil.rmtree, FOLDER, ignore_errors=True)
 RICH = """
 [waves.both]
 rate = "2 Hz"

@@ -53,7 +53,7 @@ def test_gauge_and_absolute_differ_by_the_ambient_pressure() -> None:
     ("50 Ω", "ohm", 50.0), ("5 µs", "s", 5e-6), ("5 μs", "s", 5e-6), ("60 %", "", 0.6),
     ("+3 V", "V", 3.0), (".5 V", "V", 0.5), ("5. V", "V", 5.0), ("  7 V ", "V", 7.0),
     ("5e9 Pa * s / m ^ 3", "Pa*s/m^3", 5e9), ("3.2e7 Pa*s**2/m**3", "Pa*s^2/m^3", 3.2e7),
-    ("90 deg", "deg", 90.0), ("1 day", "s", 86400.0),
+    ("90 deg", "deg", 90.0), ("3.141592653589793 rad", "deg", 180.0), ("1 day", "s", 86400.0),
 ])
 def test_quantity_is_read_in_si(text: str, unit: str, value: float) -> None:
     assert parse(text, unit) == pytest.approx(value, rel=1e-12)
@@ -72,7 +72,10 @@ def test_temperature_minds_its_offset(text: str, value: float) -> None:
     (1.2, "A", "number without unit", 'write "1.2 A"'),
     ("3 V", "A", '"V" is no unit of current', 'write "1 A"'),
     ("35 cmh2o", "Pa", 'unknown unit "cmh2o"', 'did you mean "cmH2O"?'),
-    ("60 rpm", "Hz", '"rpm" is ambiguous', 'write "60 1/min"'),
+    ("60 rpm", "Hz", '"rpm" is an angle', 'write "60 1/min"'),
+    ("6 rad/s", "Hz", '"rad" is an angle', 'write "60 1/min"'),
+    ("90 deg", "", '"deg" is no unit of plain number', "write 0.5"),
+    ("90 %", "deg", '"%" is no unit of angle', 'write "1 deg"'),
     ("1e400 A", "A", "this current is not a finite number", "write an ordinary number"),
     (float("nan"), "", "this plain number is not a finite number", "write an ordinary number"),
     (float("inf"), "V", "number without unit", 'write "1 V"'),
