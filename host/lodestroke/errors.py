@@ -1,21 +1,21 @@
 """Every error that a user may meet, each with what, where, the value, the bound and what to try.
 
-    LodestrokeError
-    ├── RigError          a rig file that cannot be used
-    ├── ScheduleError     a schedule or plan that cannot be used, or that the rig refuses
-    ├── PortError         no port, or a port that cannot be opened
-    │   ├── PortLost      it went away while in use
-    │   └── PortBusy      somebody else has it
-    ├── LinkError         the board answers, but not as it should
-    │   ├── LinkTimeout   it does not answer
-    │   ├── WireMismatch  it speaks another version
-    │   └── Refused       it refused a command, with its reason
-    ├── Tripped           an interlock ended the run
-    ├── FlashError        installing firmware failed
-    ├── LogbookError      a logbook that cannot be opened, written or trusted
-    ├── ProofFailed       an invariant did not hold
-    ├── Interrupted       Ctrl-C or SIGTERM ended the work, safely
-    └── Unavailable       something this machine does not have (the real interpreter, say)
+LodestrokeError
+├── RigError          a rig file that cannot be used
+├── ScheduleError     a schedule or plan that cannot be used, or that the rig refuses
+├── PortError         no port, or a port that cannot be opened
+│   ├── PortLost      it went away while in use
+│   └── PortBusy      somebody else has it
+├── LinkError         the board answers, but not as it should
+│   ├── LinkTimeout   it does not answer
+│   ├── WireMismatch  it speaks another version
+│   └── Refused       it refused a command, with its reason
+├── Tripped           an interlock ended the run
+├── FlashError        installing firmware failed
+├── LogbookError      a logbook that cannot be opened, written or trusted
+├── ProofFailed       an invariant did not hold
+├── Interrupted       Ctrl-C or SIGTERM ended the work, safely
+└── Unavailable       something this machine does not have (the real interpreter, say)
 """
 
 from __future__ import annotations
@@ -58,7 +58,10 @@ class LodestrokeError(Exception):
         """The error as the command prints it: one line a part."""
         rows = [self.what]
         for label, value in (
-            ("at", self.at), ("got", self.got), ("bound", self.bound), ("try", self.try_)
+            ("at", self.at),
+            ("got", self.got),
+            ("bound", self.bound),
+            ("try", self.try_),
         ):
             if value:
                 rows.append(f"  {label:<5} {value}")
@@ -67,8 +70,12 @@ class LodestrokeError(Exception):
     def as_json(self) -> dict[str, str]:
         """The same parts for `--json`."""
         return {
-            "error": type(self).__name__, "what": self.what, "at": self.at,
-            "got": self.got, "bound": self.bound, "try": self.try_,
+            "error": type(self).__name__,
+            "what": self.what,
+            "at": self.at,
+            "got": self.got,
+            "bound": self.bound,
+            "try": self.try_,
         }
 
 

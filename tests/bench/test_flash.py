@@ -204,3 +204,28 @@ def test_the_bundle_id_changes_with_any_file_and_not_with_time() -> None:
     assert "lodeboard/hal_rp2.py" in other.files
     assert "lodeboard/hal_rp2.py" not in first.files
     assert all(sha256(first.files[n]) == s for n, s in first.manifest["files"].items())
+
+
+@pytest.mark.parametrize("step", range(1, 6))
+def test_power_lost_at_any_step_leaves_a_board_that_answers(step: int) -> None:
+    """Old firmware or new, never none; the next install then succeeds."""
+    rig = load_rig(RIG)
+    image = other_package(board_image(rig), "lodeboard/extra.py", b"x = 1\n")
+    image["pointer.0"] = pointer_line(1, B, GOOD, "-", 50)
+    said: list[str] = []
+    with start_board(RIG, still=True, files=image) as board:
+        until(lambda: bool(board.status()["owned"]))
+
+        def cut(text: str) -> None:
+            said.append(text)
+            if len(said) == step + 1:
+                board.power_cut()
+
+        try:
+            install(rig, board.port, cut)
+        except FlashError as failed:
+            assert failed.try_
+            assert hello(board.port).bundle_id == b"\x11" * 8
+            install(rig, board.port, lambda _: None)
+        assert len(said) > step
+        assert hello(board.port).bundle_id == bundle_id_for(rig)

@@ -1,7 +1,7 @@
 """Draw the tables of DEVELOPERS.md from the code that both ends share.
 
-    python tests/tools/tables.py           rewrite them in place
-    python tests/tools/tables.py --check   exit 1 when the page and the code differ
+python tests/tools/tables.py           rewrite them in place
+python tests/tools/tables.py --check   exit 1 when the page and the code differ
 """
 
 from __future__ import annotations
@@ -47,8 +47,15 @@ def message_table() -> str:
     rows = []
     for way, listing in (("down", messages.DOWN), ("up", messages.UP)):
         for code, name, form, fields in listing:
-            rows.append((way, f"0x{code:02X}", f"`{name}`", str(struct.calcsize(form)),
-                         ", ".join(fields) or "–"))
+            rows.append(
+                (
+                    way,
+                    f"0x{code:02X}",
+                    f"`{name}`",
+                    str(struct.calcsize(form)),
+                    ", ".join(fields) or "–",
+                )
+            )
     return table(("way", "code", "message", "bytes", "fields"), rows)
 
 
@@ -58,16 +65,21 @@ def record_table() -> str:
     return table(("op", "name"), [(str(getattr(program, name)), name) for name in names])
 
 
-TABLES = {"states": state_table, "trips": trip_table, "messages": message_table,
-          "records": record_table}
+TABLES = {
+    "states": state_table,
+    "trips": trip_table,
+    "messages": message_table,
+    "records": record_table,
+}
 
 
 def drawn(text: str) -> str:
     """The page with every marked table drawn anew."""
     for name, draw in TABLES.items():
         pattern = rf"(<!-- table {name} -->\n).*?(\n<!-- end {name} -->)"
+        body = draw()
         text, count = re.subn(
-            pattern, lambda found, body=draw(): found[1] + body + found[2], text, flags=re.S
+            pattern, lambda found, body=body: found[1] + body + found[2], text, flags=re.S
         )
         if count != 1:
             raise SystemExit(f"DEVELOPERS.md lacks the markers of table {name}")

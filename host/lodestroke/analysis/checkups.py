@@ -17,9 +17,9 @@ if TYPE_CHECKING:
     from ..rig import Rig
 
 Result = dict[str, Any]
-K_COPPER = 235.0            # IEC 60034-1 resistance method
-U_STATED_SUPPLY = 0.01      # relative, of a supply that is stated and not measured; our assumption
-_SMOOTH = 3                 # ticks in a running mean: steadies noise, short against a valve's opening
+K_COPPER = 235.0  # IEC 60034-1 resistance method
+U_STATED_SUPPLY = 0.01  # relative, of a supply that is stated and not measured; our assumption
+_SMOOTH = 3  # ticks in a running mean: steadies noise, short against a valve's opening
 _UL = 1e9
 
 
@@ -63,7 +63,8 @@ def cracking(rows: np.ndarray, rig: Rig) -> Result:
         "outlet_cracking_pa": round(float(across_out.max()), 1),
         "u_outlet_cracking_pa": round(_u_pressure(rig, "chamber", "outlet"), 1),
         **_inlet_cracking(across_in, _u_pressure(rig, "chamber", "inlet")),
-        "ok": rise > needed, "why": "",
+        "ok": rise > needed,
+        "why": "",
     }
     if not result["ok"]:
         result["why"] = f"the outlet rose by {rise:.0f} Pa only: its valve did not open"
@@ -111,8 +112,10 @@ def stroke_volume(rows: np.ndarray, rig: Rig) -> Result:
     u_c = abs(mean) * rig.tolerances.compliance
     u_p = rig.outlet.compliance * rig.sensors.outlet.noise * (2 / 20) ** 0.5 * _UL
     return {
-        "stroke_volume_ul": round(mean, 3), "u_stroke_volume_ul": round(combine(u_a, u_c, u_p), 3),
-        "strokes": len(volumes), "ok": len(volumes) > 0,
+        "stroke_volume_ul": round(mean, 3),
+        "u_stroke_volume_ul": round(combine(u_a, u_c, u_p), 3),
+        "strokes": len(volumes),
+        "ok": len(volumes) > 0,
         "why": "" if volumes else "no stroke was found in the samples",
     }
 
@@ -133,13 +136,19 @@ def coil_resistance(rows: np.ndarray, rig: Rig) -> Result:
         return {"ok": False, "why": "no current flowed: is the coil open?"}
     driver = rig.driver
     ohm = duty * (driver.supply - driver.source_resistance * duty * current) / current
-    u = ohm * combine(combine(u_a, rig.sensors.coil_a.uncertainty) / current,
-                      u_duty / duty if duty else 0.0, U_STATED_SUPPLY)
+    u = ohm * combine(
+        combine(u_a, rig.sensors.coil_a.uncertainty) / current,
+        u_duty / duty if duty else 0.0,
+        U_STATED_SUPPLY,
+    )
     r20 = rig.coils[0].resistance
     return {
-        "coil_resistance_ohm": round(ohm, 4), "u_coil_resistance_ohm": round(u, 4),
+        "coil_resistance_ohm": round(ohm, 4),
+        "u_coil_resistance_ohm": round(u, 4),
         "winding_degc": round(ohm / r20 * (K_COPPER + 20.0) - K_COPPER, 1),
-        "u_winding_degc": round(u / r20 * (K_COPPER + 20.0), 1), "ok": True, "why": "",
+        "u_winding_degc": round(u / r20 * (K_COPPER + 20.0), 1),
+        "ok": True,
+        "why": "",
     }
 
 
@@ -153,13 +162,19 @@ def zero_flow(rows: np.ndarray, rig: Rig) -> Result:
     u = combine(u_a, rig.sensors.outlet.uncertainty)
     per_pa = _UL * 60.0 / rig.outlet.restriction
     return {
-        "zero_flow_ul_per_min": round(above * per_pa, 3), "u_zero_flow_ul_per_min": round(u * per_pa, 3),
-        "outlet_drift_pa_per_s": round(fit.slope, 3), "u_outlet_drift_pa_per_s": round(fit.u_slope, 3),
-        "chamber_pa": round(float(rows["chamber_pa"].mean()), 1), "ok": True, "why": "",
+        "zero_flow_ul_per_min": round(above * per_pa, 3),
+        "u_zero_flow_ul_per_min": round(u * per_pa, 3),
+        "outlet_drift_pa_per_s": round(fit.slope, 3),
+        "u_outlet_drift_pa_per_s": round(fit.u_slope, 3),
+        "chamber_pa": round(float(rows["chamber_pa"].mean()), 1),
+        "ok": True,
+        "why": "",
     }
 
 
 _ITEMS: dict[str, Callable[[np.ndarray, Rig], Result]] = {
-    "cracking": cracking, "stroke_volume": stroke_volume, "coil_resistance": coil_resistance,
+    "cracking": cracking,
+    "stroke_volume": stroke_volume,
+    "coil_resistance": coil_resistance,
     "zero_flow": zero_flow,
 }

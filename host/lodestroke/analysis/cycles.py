@@ -11,7 +11,7 @@ from .uncertainty import combine, line
 if TYPE_CHECKING:
     from ..rig import Rig
 
-K = 2.0      # coverage factor of the margins
+K = 2.0  # coverage factor of the margins
 
 
 def column(rows: list[dict[str, Any]], name: str) -> np.ndarray:
@@ -38,8 +38,10 @@ def margins_pa(rows: list[dict[str, Any]], rig: Rig) -> dict[str, np.ndarray]:
     """Per valve and cycle: collapse less the worst measured reverse pressure, less k u of the sensors."""
     u_outlet = combine(rig.sensors.outlet.uncertainty, rig.sensors.chamber.uncertainty)
     u_inlet = rig.sensors.chamber.uncertainty
-    collapse = {side: sum(valve.collapse for valve in getattr(rig.valves, side))
-                for side in ("inlet", "outlet")}
+    collapse = {
+        side: sum(valve.collapse for valve in getattr(rig.valves, side))
+        for side in ("inlet", "outlet")
+    }
     return {
         "outlet": collapse["outlet"] - column(rows, "outlet_reverse_max_pa") - K * u_outlet,
         "inlet": collapse["inlet"] - column(rows, "inlet_reverse_max_pa") - K * u_inlet,
@@ -63,10 +65,13 @@ def summary(rows: list[dict[str, Any]], rig: Rig) -> dict[str, Any]:
     margin = margins_pa(rows, rig)
     time_s = seconds(rows, rig)
     return {
-        "cycles": len(rows), "pumping_s": round(float(time_s[-1]), 3),
+        "cycles": len(rows),
+        "pumping_s": round(float(time_s[-1]), 3),
         "mean_flow_ul_per_min": round(float(flow.mean()), 2),
         "u_mean_flow_ul_per_min": round(u_flow, 2),
-        "volume_ul": round(float((flow / 60.0 * column(rows, "duration_ticks") * rig.board.tick).sum()), 2),
+        "volume_ul": round(
+            float((flow / 60.0 * column(rows, "duration_ticks") * rig.board.tick).sum()), 2
+        ),
         "least_margin_outlet_pa": round(float(margin["outlet"].min()), 1),
         "least_margin_inlet_pa": round(float(margin["inlet"].min()), 1),
         "chamber_max_pa": int(column(rows, "chamber_max_pa").max()),

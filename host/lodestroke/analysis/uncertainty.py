@@ -53,5 +53,6 @@ def line(x: np.ndarray, y: np.ndarray) -> Line:
     intercept = float(y.mean() - slope * middle)
     residual = y - intercept - slope * x
     sd = math.sqrt(float(residual @ residual) / (n - 2)) if n > 2 else math.nan
-    return Line(intercept, slope, sd * math.sqrt(1.0 / n + middle * middle / sxx),
-                sd / math.sqrt(sxx), sd)
+    return Line(
+        intercept, slope, sd * math.sqrt(1.0 / n + middle * middle / sxx), sd / math.sqrt(sxx), sd
+    )

@@ -44,10 +44,15 @@ def crash(fault: BaseException) -> NoReturn:
         "w", prefix="lodestroke-crash-", suffix=".txt", delete=False, encoding="utf-8"
     ) as file:
         traceback.print_exception(type(fault), fault, fault.__traceback__, file=file)
-    fail(LodestrokeError(
-        "Lodestroke itself failed", at="lodestroke " + " ".join(sys.argv[1:]),
-        got=f"{type(fault).__name__}: {fault}",
-        bound="no fault of ours", try_=f"report it with the details in {file.name}"))
+    fail(
+        LodestrokeError(
+            "Lodestroke itself failed",
+            at="lodestroke " + " ".join(sys.argv[1:]),
+            got=f"{type(fault).__name__}: {fault}",
+            bound="no fault of ours",
+            try_=f"report it with the details in {file.name}",
+        )
+    )
 
 
 class Progress:
@@ -61,9 +66,13 @@ class Progress:
         from rich.progress import BarColumn, Progress, TextColumn, TimeRemainingColumn
 
         self.bar = Progress(
-            TextColumn("{task.description}"), BarColumn(),
-            TextColumn("{task.completed:.0f}/{task.total:.0f} " + unit), TimeRemainingColumn(),
-            console=Console(stderr=True), transient=True)
+            TextColumn("{task.description}"),
+            BarColumn(),
+            TextColumn("{task.completed:.0f}/{task.total:.0f} " + unit),
+            TimeRemainingColumn(),
+            console=Console(stderr=True),
+            transient=True,
+        )
         self.bar.start()
         self.task = self.bar.add_task(label, total=total)
 
@@ -81,8 +90,12 @@ class Progress:
 
 def json_option(function: Any) -> Any:
     """--json, the same everywhere."""
-    return click.option("--json", "as_json", is_flag=True,
-                        help="One JSON object on standard output, talk on standard error.")(function)
+    return click.option(
+        "--json",
+        "as_json",
+        is_flag=True,
+        help="One JSON object on standard output, talk on standard error.",
+    )(function)
 
 
 def confirm_energising(kind: str, yes: bool) -> None:
@@ -96,9 +109,15 @@ def confirm_energising(kind: str, yes: bool) -> None:
     if yes:
         return
     if not sys.stdin.isatty():
-        fail(NotConfirmed(
-            "nobody said yes to energising the coil", at="--yes", got="no terminal to ask on",
-            bound="a yes", try_="read the cautions above, then add --yes"))
+        fail(
+            NotConfirmed(
+                "nobody said yes to energising the coil",
+                at="--yes",
+                got="no terminal to ask on",
+                bound="a yes",
+                try_="read the cautions above, then add --yes",
+            )
+        )
     if not click.confirm("Energise the coil?", default=False, err=True):
         say("nothing was energised")
         raise SystemExit(int(Exit.INTERRUPTED))

@@ -15,8 +15,13 @@ from .common import Progress, emit_json, fail, json_option, say
 @click.argument("rig", type=click.Path())
 @click.argument("schedule", type=click.Path())
 @click.option("--seed", default=0, show_default=True, help="0 is the nominal pump; others vary it.")
-@click.option("--on", "place", default="twin", show_default=True,
-              help="twin, or virtual: the real interpreter in lock-step.")
+@click.option(
+    "--on",
+    "place",
+    default="twin",
+    show_default=True,
+    help="twin, or virtual: the real interpreter in lock-step.",
+)
 @click.option("--out", metavar="FOLDER", help="Write dry-run.json, samples.csv and a page there.")
 @json_option
 def command(rig: str, schedule: str, seed: int, place: str, out: str | None, as_json: bool) -> None:
@@ -35,9 +40,14 @@ def command(rig: str, schedule: str, seed: int, place: str, out: str | None, as_
         bar = Progress(plan.title, compile_program(plan, loaded).cycles, "cycles")
         with StopFlag() as flag:
             try:
-                shown = dry_run(loaded, plan, seed=seed, on=place,
-                                stop=lambda: "interrupted" if flag.raised else "",
-                                progress=lambda outcome: bar.to(outcome.cycles_done))
+                shown = dry_run(
+                    loaded,
+                    plan,
+                    seed=seed,
+                    on=place,
+                    stop=lambda: "interrupted" if flag.raised else "",
+                    progress=lambda outcome: bar.to(outcome.cycles_done),
+                )
             finally:
                 bar.close()
         files = _write(Path(out), shown, loaded) if out else []
@@ -56,9 +66,19 @@ def _tell(result: dict[str, Any], as_json: bool, files: list[Path]) -> None:
     if as_json:
         emit_json(result)
     else:
-        for key in ("end", "cycles", "duration_s", "delivered_ul", "mean_flow_ul_min",
-                    "peak_chamber_pa", "peak_outlet_pa", "min_margin_pa", "peak_coil_c", "seed",
-                    "trace_sha256"):
+        for key in (
+            "end",
+            "cycles",
+            "duration_s",
+            "delivered_ul",
+            "mean_flow_ul_min",
+            "peak_chamber_pa",
+            "peak_outlet_pa",
+            "min_margin_pa",
+            "peak_coil_c",
+            "seed",
+            "trace_sha256",
+        ):
             click.echo(f"{key:<18} {result[key]}")
     for trip in result["trips"]:
         say("tripped: " + trips.sentence(trip))
@@ -83,8 +103,11 @@ def _write(folder: Path, shown: Any, rig: Any) -> list[Path]:
         table = pa.table({name: shown.samples[name] for name in shown.samples.dtype.names})
         samples = folder / "samples.csv"
         pa.csv.write_csv(table, str(samples))
-        return [answer, samples, dry_run_page(
-            shown.result, shown.samples, shown.cycles, rig, folder / "dry-run.html")]
+        return [
+            answer,
+            samples,
+            dry_run_page(shown.result, shown.samples, shown.cycles, rig, folder / "dry-run.html"),
+        ]
     except OSError as fault:
         raise CannotWrite(folder, fault) from fault
 
@@ -95,6 +118,10 @@ class CannotWrite(LodestrokeError):
     exit_code = Exit.BAD_INPUT
 
     def __init__(self, folder: Path, fault: OSError) -> None:
-        super().__init__("the dry-run's files cannot be written", at=f"--out {folder}",
-                         got=str(fault), bound="a folder that can be written",
-                         try_="name another folder")
+        super().__init__(
+            "the dry-run's files cannot be written",
+            at=f"--out {folder}",
+            got=str(fault),
+            bound="a folder that can be written",
+            try_="name another folder",
+        )

@@ -25,12 +25,22 @@ from .common import (
 @click.option("--resume", is_flag=True, help="Carry on the newest open run of this rig and plan.")
 @click.option("--clear", metavar="TRIP", help="Clear this latched trip first, by its name.")
 @click.option("--yes", is_flag=True, help="The cautions have been read: energise without asking.")
-@click.option("--cutout-fitted", is_flag=True,
-              help="An independent thermal cut-out is in the coil's supply.")
+@click.option(
+    "--cutout-fitted", is_flag=True, help="An independent thermal cut-out is in the coil's supply."
+)
 @json_option
 @click.pass_context
-def command(ctx: click.Context, rig: str, plan: str, port: str | None, resume: bool,
-            clear: str | None, yes: bool, cutout_fitted: bool, as_json: bool) -> None:
+def command(
+    ctx: click.Context,
+    rig: str,
+    plan: str,
+    port: str | None,
+    resume: bool,
+    clear: str | None,
+    yes: bool,
+    cutout_fitted: bool,
+    as_json: bool,
+) -> None:
     """Run an endurance plan on the board; one run, also when resumed."""
     from ..flash import bundle_id_for
     from ..rig import load_rig
@@ -48,8 +58,17 @@ def command(ctx: click.Context, rig: str, plan: str, port: str | None, resume: b
         bar = Progress(test.title, test.target_cycles, "cycles")
         try:
             summary = endure(
-                logbook, loaded, test, schedule, name, bundle_id_for(loaded), resume=resume,
-                clear=clear, say=say, progress=lambda outcome: bar.to(outcome.cycles_done))
+                logbook,
+                loaded,
+                test,
+                schedule,
+                name,
+                bundle_id_for(loaded),
+                resume=resume,
+                clear=clear,
+                say=say,
+                progress=lambda outcome: bar.to(outcome.cycles_done),
+            )
         finally:
             bar.close()
     except LodestrokeError as error:
@@ -57,9 +76,11 @@ def command(ctx: click.Context, rig: str, plan: str, port: str | None, resume: b
     if as_json:
         emit_json(summary)
     else:
-        click.echo(f"run {summary['run']}: {summary['end']}, {summary['cycles_done']} of "
-                   f"{summary['target_cycles']} cycles, {summary['resumes']} resumes, "
-                   f"{len(summary['gaps'])} gaps, logged in {logbook.name}")
+        click.echo(
+            f"run {summary['run']}: {summary['end']}, {summary['cycles_done']} of "
+            f"{summary['target_cycles']} cycles, {summary['resumes']} resumes, "
+            f"{len(summary['gaps'])} gaps, logged in {logbook.name}"
+        )
     if summary["end"] == "interrupted":
         say(f"resume it: lodestroke endure {rig} {plan} --port {name} --resume")
         raise SystemExit(int(Exit.INTERRUPTED))
@@ -69,7 +90,12 @@ def command(ctx: click.Context, rig: str, plan: str, port: str | None, resume: b
 
 def _ask_for_cutout(kind: str, fitted: bool) -> None:
     if kind != "virtual" and not fitted:
-        fail(NotConfirmed(
-            "an unattended bench needs an independent thermal cut-out in the coil's supply",
-            at="--cutout-fitted", got="not said", bound="said",
-            try_="fit one that opens by itself; then add --cutout-fitted"))
+        fail(
+            NotConfirmed(
+                "an unattended bench needs an independent thermal cut-out in the coil's supply",
+                at="--cutout-fitted",
+                got="not said",
+                bound="said",
+                try_="fit one that opens by itself; then add --cutout-fitted",
+            )
+        )

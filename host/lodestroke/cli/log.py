@@ -35,14 +35,22 @@ def list_(ctx: click.Context, as_json: bool) -> None:
 
     table = Table("run", "kind", "title", "started (UTC)", "place", "end", title=logbook.name)
     for row in rows:
-        table.add_row(row["id"], row["kind"], row["title"], row["started"][:19], row["place"],
-                      row["end"] or "open")
+        table.add_row(
+            row["id"],
+            row["kind"],
+            row["title"],
+            row["started"][:19],
+            row["place"],
+            row["end"] or "open",
+        )
     Console().print(table)
 
 
 def _brief(row: dict[str, Any]) -> dict[str, Any]:
-    return {key: row[key] for key in
-            ("id", "kind", "title", "started", "ended", "place", "end", "resumes", "summary")}
+    return {
+        key: row[key]
+        for key in ("id", "kind", "title", "started", "ended", "place", "end", "resumes", "summary")
+    }
 
 
 @command.command()
@@ -56,8 +64,10 @@ def show(ctx: click.Context, run: str, as_json: bool) -> None:
     try:
         logbook = open_log(ctx, create=False)
         row = reader.run(logbook, run)
-        parts = {name: getattr(reader, name)(logbook, row["id"])
-                 for name in ("trips", "checkups", "marks", "gaps", "notes")}
+        parts = {
+            name: getattr(reader, name)(logbook, row["id"])
+            for name in ("trips", "checkups", "marks", "gaps", "notes")
+        }
         cycles = reader.last_cycle(logbook, row["id"])
     except LodestrokeError as error:
         fail(error, as_json)
@@ -71,9 +81,14 @@ def show(ctx: click.Context, run: str, as_json: bool) -> None:
         if isinstance(value, list):
             click.echo(f"{key}: {len(value)}")
             for item in value:
-                click.echo("  " + ", ".join(
-                    f"{name}={entry}" for name, entry in item.items()
-                    if name not in ("id", "run", "nonce", "recorder_crc32")))
+                click.echo(
+                    "  "
+                    + ", ".join(
+                        f"{name}={entry}"
+                        for name, entry in item.items()
+                        if name not in ("id", "run", "nonce", "recorder_crc32")
+                    )
+                )
         elif isinstance(value, dict):
             click.echo(f"{key}:")
             for name, entry in value.items():

@@ -56,8 +56,11 @@ class Lazy(click.Group):
 
 
 @click.command(cls=Lazy, context_settings={"help_option_names": ["-h", "--help"]})
-@click.option("--logbook", metavar="PATH-or-URL",
-              help="Where runs live; else LODESTROKE_LOGBOOK, else a file in your data folder.")
+@click.option(
+    "--logbook",
+    metavar="PATH-or-URL",
+    help="Where runs live; else LODESTROKE_LOGBOOK, else a file in your data folder.",
+)
 @click.version_option(__version__, prog_name="lodestroke")
 @click.pass_context
 def group(ctx: click.Context, logbook: str | None) -> None:
@@ -67,8 +70,8 @@ def group(ctx: click.Context, logbook: str | None) -> None:
 
 def main() -> None:
     """Entry point: no traceback ever reaches the user."""
-    from .common import crash, fail
     from ..errors import Interrupted, LodestrokeError
+    from .common import crash, fail
 
     try:
         group(prog_name="lodestroke", standalone_mode=False)

@@ -25,8 +25,15 @@ from .common import (
 @click.option("--yes", is_flag=True, help="The cautions have been read: energise without asking.")
 @json_option
 @click.pass_context
-def command(ctx: click.Context, rig: str, schedule: str, port: str | None, clear: str | None,
-            yes: bool, as_json: bool) -> None:
+def command(
+    ctx: click.Context,
+    rig: str,
+    schedule: str,
+    port: str | None,
+    clear: str | None,
+    yes: bool,
+    as_json: bool,
+) -> None:
     """Run a schedule on the board and log it."""
     from .. import trips
     from ..flash import bundle_id_for
@@ -43,8 +50,16 @@ def command(ctx: click.Context, rig: str, schedule: str, port: str | None, clear
         logbook = open_log(ctx)
         bar = Progress(plan.title, total, "cycles")
         try:
-            summary = run(logbook, loaded, plan, name, bundle_id_for(loaded), clear=clear, say=say,
-                          progress=lambda outcome: bar.to(outcome.cycles_done))
+            summary = run(
+                logbook,
+                loaded,
+                plan,
+                name,
+                bundle_id_for(loaded),
+                clear=clear,
+                say=say,
+                progress=lambda outcome: bar.to(outcome.cycles_done),
+            )
         finally:
             bar.close()
     except LodestrokeError as error:
@@ -52,8 +67,10 @@ def command(ctx: click.Context, rig: str, schedule: str, port: str | None, clear
     if as_json:
         emit_json(summary)
     else:
-        click.echo(f"run {summary['run']}: {summary['end']}, {summary['cycles_done']} cycles, "
-                   f"{summary['duration_s']} s, logged in {logbook.name}")
+        click.echo(
+            f"run {summary['run']}: {summary['end']}, {summary['cycles_done']} cycles, "
+            f"{summary['duration_s']} s, logged in {logbook.name}"
+        )
     for trip in summary["trips"]:
         say("tripped: " + trips.sentence(trip))
     if summary["end"] == "interrupted":

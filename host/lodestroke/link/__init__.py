@@ -6,6 +6,16 @@ from .port import Port
 from .ports import find_port, open_port
 
 __all__ = [
-    "Beat", "BoardInfo", "Client", "Entry", "Event", "Port", "Recorded", "Restarted", "Sample",
-    "Text", "find_port", "open_port",
+    "Beat",
+    "BoardInfo",
+    "Client",
+    "Entry",
+    "Event",
+    "Port",
+    "Recorded",
+    "Restarted",
+    "Sample",
+    "Text",
+    "find_port",
+    "open_port",
 ]

@@ -27,16 +27,16 @@ class Client:
         self.info: BoardInfo | None = None
         self.reader = UpReader()
         self.events: deque[Event] = deque()
-        self.saved_entry = 0          # on disk here
-        self.seen_entry = 0           # handed on
-        self.up_frame = 0             # last up frame number
-        self.since_beat = 0           # frames since our last beat
+        self.saved_entry = 0  # on disk here
+        self.seen_entry = 0  # handed on
+        self.up_frame = 0  # last up frame number
+        self.since_beat = 0  # frames since our last beat
         self.beat_at = port.now_s()
         self.number = 0
         self.reply: Reply | None = None
         self.hello_seen: BoardInfo | None = None
         self.resends = 0
-        self.text_tail = ""           # the last text the board printed, for error messages
+        self.text_tail = ""  # the last text the board printed, for error messages
 
     # commands
 
@@ -70,7 +70,8 @@ class Client:
         if info.wire_version != messages.WIRE_VERSION:
             raise WireMismatch(
                 "the board's firmware speaks another version of the link",
-                at=self.port.name, got=f"wire {info.wire_version:08x}",
+                at=self.port.name,
+                got=f"wire {info.wire_version:08x}",
                 bound=f"wire {messages.WIRE_VERSION:08x} (this computer)",
                 try_="install matching firmware: lodestroke flash RIG --port " + self.port.name,
             )
@@ -112,8 +113,9 @@ class Client:
         assert binascii.crc32(data) == crc32
         for offset in range(0, len(data), _PART):
             part = data[offset : offset + _PART]
-            self.command("put", blob=blob, offset=offset, count=len(part),
-                         data=part.ljust(_PART, b"\0"))
+            self.command(
+                "put", blob=blob, offset=offset, count=len(part), data=part.ljust(_PART, b"\0")
+            )
         self.command("seal", blob=blob, length=len(data), crc32=crc32, fingerprint=fingerprint)
 
     def recall(self, timeout_s: float = 20.0) -> bytes:
@@ -220,14 +222,17 @@ class Client:
             got=f"text instead: {said!r}" if said else "nothing",
             bound=f"an answer within {TRIES * RESEND_S:.1f} s",
             try_="is Lodestroke's firmware on it, and no other program on the port? "
-                 "lodestroke flash RIG --port " + self.port.name,
+            "lodestroke flash RIG --port " + self.port.name,
         )
 
     def _refused(self, name: str, result: int) -> Refused:
         reason = messages.RESULTS[result] if result < len(messages.RESULTS) else f"result {result}"
         return Refused(
-            f"the board refused '{name}': {reason}", at=self.port.name, got=reason,
-            bound="ok", try_=_ADVICE.get(result, "look at the board's state with lodestroke watch"),
+            f"the board refused '{name}': {reason}",
+            at=self.port.name,
+            got=reason,
+            bound="ok",
+            try_=_ADVICE.get(result, "look at the board's state with lodestroke watch"),
         )
 
 

@@ -8,7 +8,7 @@ from typing import Protocol
 class Port(Protocol):
     """Bytes to and from one board. Time-outs count in the port's own time (simulated on a twin)."""
 
-    name: str          # "/dev/ttyACM0", "twin", "lock-step"; shown to the user
+    name: str  # "/dev/ttyACM0", "twin", "lock-step"; shown to the user
 
     def read(self, timeout_s: float) -> bytes:
         """What has arrived, waiting at most timeout_s for the first byte; b"" if nothing did.

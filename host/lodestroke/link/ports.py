@@ -34,7 +34,9 @@ def _none_or_many(usb_serial: str | None, ports: list[Any]) -> str:
     elif sum(port.serial_number == usb_serial for port in ports) > 1:
         what = "two ports carry the rig's USB serial number"
     raise PortError(
-        what, at="board.port.usb_serial", got=listing or "no USB serial port",
+        what,
+        at="board.port.usb_serial",
+        got=listing or "no USB serial port",
         bound=f"one port with USB serial {usb_serial}" if usb_serial else "a port",
         try_="name it: --port /dev/ttyACM0, or the name that lodestroke board prints",
     )

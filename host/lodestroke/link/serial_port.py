@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import contextlib
 import time
 from typing import TYPE_CHECKING, Any
 
@@ -45,17 +46,17 @@ class SerialPort:
 
     def close(self) -> None:
         """Give the port back."""
-        try:
+        with contextlib.suppress(OSError):
             self.line.close()
-        except OSError:
-            pass
 
     def _lost(self, fault: BaseException) -> PortLost:
         return PortLost(
-            "the port went away while in use", at=self.name, got=str(fault) or "no data",
+            "the port went away while in use",
+            at=self.name,
+            got=str(fault) or "no data",
             bound="a board that stays connected",
             try_="look at cable and power. The board is safe by itself: it stops when the host is "
-                 "silent. Then run again, or endure --resume",
+            "silent. Then run again, or endure --resume",
         )
 
 
@@ -80,12 +81,18 @@ def _worded(name: str, fault: BaseException) -> PortError:
     text = str(fault)
     if "exclusively lock" in text or "busy" in text.lower() or "Errno 11" in text:
         return PortBusy(
-            "another program has the port", at=name, got=text, bound="a free port",
+            "another program has the port",
+            at=name,
+            got=text,
+            bound="a free port",
             try_="end the other program (a terminal, an endurance run, watch of another tool)",
         )
     seen = ", ".join(port.device for port in ports_seen()) or "none"
     return PortError(
-        "the port cannot be opened", at=name, got=text, bound=f"a serial port; seen here: {seen}",
+        "the port cannot be opened",
+        at=name,
+        got=text,
+        bound=f"a serial port; seen here: {seen}",
         try_="name it with --port, or start a virtual board: lodestroke board RIG",
     )
 

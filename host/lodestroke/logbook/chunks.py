@@ -9,7 +9,7 @@ from __future__ import annotations
 import hashlib
 import zlib
 
-_LEVEL = 1      # samples compress about fivefold at the fastest level; higher levels gain little
+_LEVEL = 1  # samples compress about fivefold at the fastest level; higher levels gain little
 
 
 def pack(rows: bytes) -> tuple[bytes, str]:

@@ -48,12 +48,17 @@ def open_logbook(where: str | Path | None = None, *, create: bool = True) -> Log
         with engine.begin() as connection:
             _settle_schema(connection, place)
     except NoSuchModuleError as fault:
-        raise _bad(place, str(fault), "sqlite, postgresql", "name a database that is known") from fault
+        raise _bad(
+            place, str(fault), "sqlite, postgresql", "name a database that is known"
+        ) from fault
     except ModuleNotFoundError as fault:
-        raise _bad(place, f"no driver: {fault.name}", "an installed driver",
-                   f"pip install {fault.name}") from fault
+        raise _bad(
+            place, f"no driver: {fault.name}", "an installed driver", f"pip install {fault.name}"
+        ) from fault
     except (ArgumentError, ValueError) as fault:
-        raise _bad(place, str(fault).splitlines()[0], "a path or a database URL", "mend it") from fault
+        raise _bad(
+            place, str(fault).splitlines()[0], "a path or a database URL", "mend it"
+        ) from fault
     except SQLAlchemyError as fault:
         raise worded(place, fault) from fault
     return Logbook(engine, place)
@@ -65,8 +70,12 @@ def _file_url(place: str, create: bool) -> str:
         raise _bad(place, "a folder", "a file", f"name a file, {path / 'logbook.db'} say")
     if not path.exists():
         if not create:
-            raise _bad(place, "no such file", "a logbook",
-                       "name it with --logbook, or make one by running something")
+            raise _bad(
+                place,
+                "no such file",
+                "a logbook",
+                "name it with --logbook, or make one by running something",
+            )
         try:
             path.parent.mkdir(parents=True, exist_ok=True)
         except OSError as fault:
@@ -96,13 +105,22 @@ def _settle_schema(connection: sa.Connection, place: str) -> None:
         connection.execute(schema.meta.insert(), {"key": "schema", "value": str(schema.SCHEMA)})
         return
     if "meta" not in tables or "runs" not in tables:
-        raise _bad(place, "tables " + ", ".join(sorted(tables))[:80], "a logbook's tables",
-                   "this database belongs to something else; name another file")
+        raise _bad(
+            place,
+            "tables " + ", ".join(sorted(tables))[:80],
+            "a logbook's tables",
+            "this database belongs to something else; name another file",
+        )
     found = connection.execute(
-        sa.select(schema.meta.c.value).where(schema.meta.c.key == "schema")).scalar_one_or_none()
+        sa.select(schema.meta.c.value).where(schema.meta.c.key == "schema")
+    ).scalar_one_or_none()
     if found != str(schema.SCHEMA):
-        raise _bad(place, f"schema {found}", f"schema {schema.SCHEMA}",
-                   "use the version of Lodestroke that wrote it, or a newer one")
+        raise _bad(
+            place,
+            f"schema {found}",
+            f"schema {schema.SCHEMA}",
+            "use the version of Lodestroke that wrote it, or a newer one",
+        )
 
 
 def worded(place: str, fault: SQLAlchemyError) -> LogbookError:
@@ -119,8 +137,12 @@ def worded(place: str, fault: SQLAlchemyError) -> LogbookError:
     ):
         if sign in text.lower():
             advice = hint
-    return _bad(place, text.splitlines()[0] if text else type(fault).__name__,
-                "a logbook that can be read and written", advice)
+    return _bad(
+        place,
+        text.splitlines()[0] if text else type(fault).__name__,
+        "a logbook that can be read and written",
+        advice,
+    )
 
 
 def _bad(place: str, got: str, bound: str, try_: str) -> LogbookError:

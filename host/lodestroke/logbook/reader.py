@@ -40,34 +40,50 @@ def resolve(logbook: Logbook, name: str) -> str:
     if name in listing:
         return name
     raise LogbookError(
-        "no such run", at=logbook.name, got=name,
+        "no such run",
+        at=logbook.name,
+        got=name,
         bound="last, " + ", ".join(listing[:6]) if listing else "a run; the logbook is empty",
-        try_="lodestroke log list" if listing else "run something first: lodestroke demo")
+        try_="lodestroke log list" if listing else "run something first: lodestroke demo",
+    )
 
 
 def run(logbook: Logbook, run_id: str) -> Row:
     """One run, whole. Accepts "last"."""
-    found = _all(logbook, sa.select(schema.runs).where(
-        schema.runs.c.id == resolve(logbook, run_id)))
+    found = _all(
+        logbook, sa.select(schema.runs).where(schema.runs.c.id == resolve(logbook, run_id))
+    )
     return found[0]
 
 
 def _of(logbook: Logbook, table: sa.Table, run_id: str, *order: str) -> list[Row]:
-    return _all(logbook, sa.select(table).where(table.c.run == run_id).order_by(
-        *(table.c[name] for name in order or ("id",))))
+    return _all(
+        logbook,
+        sa.select(table)
+        .where(table.c.run == run_id)
+        .order_by(*(table.c[name] for name in order or ("id",))),
+    )
 
 
 def cycles(logbook: Logbook, run_id: str, after: int = 0) -> list[Row]:
     """Cycles in order of their number, from after + 1 on."""
     table = schema.cycles
-    return _all(logbook, sa.select(table).where(
-        table.c.run == run_id, table.c.cycle > after).order_by(table.c.cycle))
+    return _all(
+        logbook,
+        sa.select(table)
+        .where(table.c.run == run_id, table.c.cycle > after)
+        .order_by(table.c.cycle),
+    )
 
 
 def last_cycle(logbook: Logbook, run_id: str) -> int:
     """The highest cycle number on disk, 0 for none."""
-    rows = _all(logbook, sa.select(sa.func.max(schema.cycles.c.cycle).label("last")).where(
-        schema.cycles.c.run == run_id))
+    rows = _all(
+        logbook,
+        sa.select(sa.func.max(schema.cycles.c.cycle).label("last")).where(
+            schema.cycles.c.run == run_id
+        ),
+    )
     return int(rows[0]["last"] or 0)
 
 
@@ -111,17 +127,24 @@ def recorder(trip: Row) -> np.ndarray:
 
 def sample_chunks(logbook: Logbook, run_id: str) -> Iterator[tuple[Row, np.ndarray]]:
     """Chunk by chunk: the chunk's row and its samples. Raises LogbookError for a damaged one."""
-    numbers = _all(logbook, sa.select(schema.chunks.c.id).where(
-        schema.chunks.c.run == run_id).order_by(schema.chunks.c.number))
+    numbers = _all(
+        logbook,
+        sa.select(schema.chunks.c.id)
+        .where(schema.chunks.c.run == run_id)
+        .order_by(schema.chunks.c.number),
+    )
     for number in numbers:
         row = _all(logbook, sa.select(schema.chunks).where(schema.chunks.c.id == number["id"]))[0]
         try:
             rows = chunks.unpack(row["data"], row["sha256"])
         except ValueError as fault:
             raise LogbookError(
-                "a chunk of samples is damaged", at=f"{logbook.name}, run {run_id}",
-                got=f"chunk {row['number']}: {fault}", bound="the checksum it was written with",
-                try_="lodestroke log verify, then restore a copy of the logbook") from fault
+                "a chunk of samples is damaged",
+                at=f"{logbook.name}, run {run_id}",
+                got=f"chunk {row['number']}: {fault}",
+                bound="the checksum it was written with",
+                try_="lodestroke log verify, then restore a copy of the logbook",
+            ) from fault
         yield row, sample_rows(rows)
 
 
@@ -133,8 +156,11 @@ def samples(logbook: Logbook, run_id: str) -> np.ndarray:
 
 def stop_requested(logbook: Logbook, run_id: str) -> bool:
     """Whether somebody asked for this run to stop since its last resume."""
-    query = sa.select(schema.requests.c.id).where(
-        schema.requests.c.run == run_id, schema.requests.c.what == "stop").limit(1)
+    query = (
+        sa.select(schema.requests.c.id)
+        .where(schema.requests.c.run == run_id, schema.requests.c.what == "stop")
+        .limit(1)
+    )
     return bool(_all(logbook, query))
 
 

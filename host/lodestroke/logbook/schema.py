@@ -8,25 +8,27 @@ SCHEMA = 1
 metadata = sa.MetaData()
 
 meta = sa.Table(
-    "meta", metadata,
+    "meta",
+    metadata,
     sa.Column("key", sa.String(40), primary_key=True),
     sa.Column("value", sa.Text, nullable=False),
 )
 
 runs = sa.Table(
-    "runs", metadata,
+    "runs",
+    metadata,
     sa.Column("id", sa.String(16), primary_key=True),
     sa.Column("serial", sa.Integer, nullable=False, unique=True),
-    sa.Column("kind", sa.String(16), nullable=False),            # dry-run, run, endure
+    sa.Column("kind", sa.String(16), nullable=False),  # dry-run, run, endure
     sa.Column("title", sa.Text, nullable=False, default=""),
-    sa.Column("place", sa.Text, nullable=False, default=""),      # twin, virtual, or the port
-    sa.Column("started", sa.String(32), nullable=False),          # UTC, ISO 8601
+    sa.Column("place", sa.Text, nullable=False, default=""),  # twin, virtual, or the port
+    sa.Column("started", sa.String(32), nullable=False),  # UTC, ISO 8601
     sa.Column("ended", sa.String(32)),
-    sa.Column("end", sa.Text),                                    # why; empty while it goes on
+    sa.Column("end", sa.Text),  # why; empty while it goes on
     sa.Column("resumes", sa.Integer, nullable=False, default=0),
-    sa.Column("meta", sa.JSON, nullable=False),                   # names, hashes, versions, seed
-    sa.Column("sources", sa.JSON, nullable=False),                # rig, schedule, plan as text
-    sa.Column("resume", sa.JSON, nullable=False),                 # what --resume needs
+    sa.Column("meta", sa.JSON, nullable=False),  # names, hashes, versions, seed
+    sa.Column("sources", sa.JSON, nullable=False),  # rig, schedule, plan as text
+    sa.Column("resume", sa.JSON, nullable=False),  # what --resume needs
     sa.Column("summary", sa.JSON),
     sa.Column("chain", sa.String(64), nullable=False, default=""),
     sa.Column("chunks", sa.Integer, nullable=False, default=0),
@@ -48,7 +50,8 @@ def _of_run(*more: sa.Column, unique: tuple[str, ...] = ()) -> list[sa.SchemaIte
 
 
 cycles = sa.Table(
-    "cycles", metadata,
+    "cycles",
+    metadata,
     *_of_run(
         sa.Column("cycle", sa.Integer, nullable=False),
         sa.Column("nonce", sa.BigInteger, nullable=False),
@@ -71,7 +74,8 @@ cycles = sa.Table(
 )
 
 trips = sa.Table(
-    "trips", metadata,
+    "trips",
+    metadata,
     *_of_run(
         sa.Column("nonce", sa.BigInteger, nullable=False),
         sa.Column("entry", sa.BigInteger, nullable=False),
@@ -85,14 +89,15 @@ trips = sa.Table(
         sa.Column("limit", sa.BigInteger, nullable=False),
         sa.Column("step", sa.Integer, nullable=False),
         sa.Column("at", sa.String(32), nullable=False),
-        sa.Column("recorder", sa.LargeBinary),                   # compressed sample rows
+        sa.Column("recorder", sa.LargeBinary),  # compressed sample rows
         sa.Column("recorder_crc32", sa.BigInteger),
         unique=("nonce", "entry"),
     ),
 )
 
 marks = sa.Table(
-    "marks", metadata,
+    "marks",
+    metadata,
     *_of_run(
         sa.Column("nonce", sa.BigInteger, nullable=False),
         sa.Column("entry", sa.BigInteger, nullable=False),
@@ -104,7 +109,8 @@ marks = sa.Table(
 )
 
 checkups = sa.Table(
-    "checkups", metadata,
+    "checkups",
+    metadata,
     *_of_run(
         sa.Column("after_cycle", sa.Integer, nullable=False),
         sa.Column("item", sa.String(40), nullable=False),
@@ -115,10 +121,11 @@ checkups = sa.Table(
 )
 
 gaps = sa.Table(
-    "gaps", metadata,
+    "gaps",
+    metadata,
     *_of_run(
         sa.Column("after_cycle", sa.Integer, nullable=False),
-        sa.Column("first_cycle", sa.Integer),                     # lost cycles that were numbered
+        sa.Column("first_cycle", sa.Integer),  # lost cycles that were numbered
         sa.Column("last_cycle", sa.Integer),
         sa.Column("unnumbered_most", sa.Integer, nullable=False, default=0),
         sa.Column("why", sa.Text, nullable=False),
@@ -127,7 +134,8 @@ gaps = sa.Table(
 )
 
 notes = sa.Table(
-    "notes", metadata,
+    "notes",
+    metadata,
     *_of_run(
         sa.Column("at", sa.String(32), nullable=False),
         sa.Column("text", sa.Text, nullable=False),
@@ -135,22 +143,24 @@ notes = sa.Table(
 )
 
 chunks = sa.Table(
-    "chunks", metadata,
+    "chunks",
+    metadata,
     *_of_run(
         sa.Column("number", sa.Integer, nullable=False),
-        sa.Column("segment", sa.Integer, nullable=False),         # which GO of the run
+        sa.Column("segment", sa.Integer, nullable=False),  # which GO of the run
         sa.Column("first_tick", sa.BigInteger, nullable=False),
         sa.Column("last_tick", sa.BigInteger, nullable=False),
         sa.Column("rows", sa.Integer, nullable=False),
         sa.Column("data", sa.LargeBinary, nullable=False),
-        sa.Column("sha256", sa.String(64), nullable=False),       # of the rows before compression
-        sa.Column("chain", sa.String(64), nullable=False),        # of the chain so far and this sum
+        sa.Column("sha256", sa.String(64), nullable=False),  # of the rows before compression
+        sa.Column("chain", sa.String(64), nullable=False),  # of the chain so far and this sum
         unique=("number",),
     ),
 )
 
 requests = sa.Table(
-    "requests", metadata,
+    "requests",
+    metadata,
     *_of_run(
         sa.Column("what", sa.String(16), nullable=False),
         sa.Column("at", sa.String(32), nullable=False),

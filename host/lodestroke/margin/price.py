@@ -184,7 +184,7 @@ def _left_out(rig: Rig) -> dict[str, Any]:
 
 def _inside(applied: float, factor: float, ms: float, chi: float) -> float:
     """The field inside the slug, H = H0 - N M(H), by bisection (M never falls with H)."""
-    from ..plant.slug import magnetisation  # noqa: PLC0415
+    from ..plant.slug import magnetisation
 
     low, high = 0.0, abs(applied)
     for _ in range(60):

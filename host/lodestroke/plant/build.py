@@ -15,9 +15,9 @@ from .slug import drag_circle, drag_rectangle
 if TYPE_CHECKING:
     from ..rig import Rig
 
-SUBSTEP_S = 1e-4          # resolves slug on chamber and spring (some 60 Hz) and coil L/R (0.6 ms)
+SUBSTEP_S = 1e-4  # resolves slug on chamber and spring (some 60 Hz) and coil L/R (0.6 ms)
 TABLE_N = 4001
-_LIMIT_SIGMA = 3.0        # tolerances are cut at three standard deviations
+_LIMIT_SIGMA = 3.0  # tolerances are cut at three standard deviations
 
 
 @dataclass(frozen=True)
@@ -57,7 +57,8 @@ def _slug(p: np.ndarray, rig: Rig) -> None:
         p[k.SLUG_DRAG] = drag_circle(slug.viscosity, slug.length, channel.radius or 0.0)
     else:
         p[k.SLUG_DRAG] = drag_rectangle(
-            slug.viscosity, slug.length, channel.width or 0.0, channel.height or 0.0)
+            slug.viscosity, slug.length, channel.width or 0.0, channel.height or 0.0
+        )
     p[k.X_MAX] = slug.travel / 2.0
     p[k.STICK] = slug.hysteresis
     p[k.M_S] = slug.saturation_magnetisation
@@ -65,7 +66,7 @@ def _slug(p: np.ndarray, rig: Rig) -> None:
     p[k.FACE] = slug.length / 2.0
     p[k.SPRING_V] = rig.spring.volume or 0.0 if rig.spring.kind == "air" else 0.0
     p[k.AMBIENT_P] = rig.ambient.pressure
-    p[k.SPRING_N] = 1.0      # isothermal: small gas volumes at a few hertz between metal walls
+    p[k.SPRING_N] = 1.0  # isothermal: small gas volumes at a few hertz between metal walls
     p[k.AMBIENT_C] = rig.ambient.temperature
 
 
@@ -91,14 +92,20 @@ def _valves(p: np.ndarray, valves: list, base: int) -> None:  # type: ignore[typ
 def _driver(p: np.ndarray, rig: Rig) -> None:
     p[k.SUPPLY] = rig.driver.supply
     p[k.R_SOURCE] = rig.driver.source_resistance
-    p[k.DIODE] = 0.7         # silicon junction, common practice
+    p[k.DIODE] = 0.7  # silicon junction, common practice
     p[k.FULL_BRIDGE] = 1.0 if rig.driver.bridge == "full" else 0.0
     p[k.COILS] = len(rig.coils)
     for n, base in enumerate((k.R20_A, k.R20_B)):
         coil = rig.coils[min(n, len(rig.coils) - 1)]
         p[base : base + 7] = (
-            coil.resistance, coil.inductance, coil.temperature_coefficient, coil.winding_to_body,
-            coil.winding_heat, coil.body_to_air, coil.body_heat)
+            coil.resistance,
+            coil.inductance,
+            coil.temperature_coefficient,
+            coil.winding_to_body,
+            coil.winding_heat,
+            coil.body_to_air,
+            coil.body_heat,
+        )
 
 
 def _tables(p: np.ndarray, rig: Rig) -> list[np.ndarray]:
@@ -110,9 +117,17 @@ def _tables(p: np.ndarray, rig: Rig) -> list[np.ndarray]:
     tables = []
     for n in range(2):
         coil = rig.coils[min(n, len(rig.coils) - 1)]
-        tables.append(field_table(
-            -reach - coil.position, p[k.TABLE_STEP], TABLE_N, float(coil.turns), coil.length,
-            coil.inner_radius, coil.outer_radius))
+        tables.append(
+            field_table(
+                -reach - coil.position,
+                p[k.TABLE_STEP],
+                TABLE_N,
+                float(coil.turns),
+                coil.length,
+                coil.inner_radius,
+                coil.outer_radius,
+            )
+        )
     return tables
 
 
@@ -123,8 +138,16 @@ def _sensors(rig: Rig, substep_s: float) -> np.ndarray:
         if sensor is None:
             continue
         keep = 1.0 - math.exp(-substep_s / sensor.lag) if sensor.lag > 0.0 else 1.0
-        rows[n] = (sensor.low, sensor.high, sensor.counts_low, sensor.counts_high,
-                   sensor.counts_full, sensor.noise, keep, 1.0)
+        rows[n] = (
+            sensor.low,
+            sensor.high,
+            sensor.counts_low,
+            sensor.counts_high,
+            sensor.counts_full,
+            sensor.noise,
+            keep,
+            1.0,
+        )
     return rows
 
 

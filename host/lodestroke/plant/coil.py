@@ -11,12 +11,13 @@ import math
 import numpy as np
 from numba import njit
 
-ZERO_C_ALPHA = 20.0     # temperature that the coefficient refers to, degC
+ZERO_C_ALPHA = 20.0  # temperature that the coefficient refers to, degC
 
 
 @njit(cache=True)
-def field_per_ampere(z_m: float, turns: float, length_m: float, inner_m: float,
-                     outer_m: float) -> float:
+def field_per_ampere(
+    z_m: float, turns: float, length_m: float, inner_m: float, outer_m: float
+) -> float:
     """H on the axis of a thick solenoid carrying 1 A, z_m from its middle, in A/m per A.
 
     Uniform current density over the window; scalars only, SI.
@@ -31,20 +32,29 @@ def field_per_ampere(z_m: float, turns: float, length_m: float, inner_m: float,
     return turns / (2.0 * length_m * (outer_m - inner_m)) * total
 
 
-def field_table(z_from_m: float, z_step_m: float, n: int, turns: float, length_m: float,
-                inner_m: float, outer_m: float) -> np.ndarray:
+def field_table(
+    z_from_m: float,
+    z_step_m: float,
+    n: int,
+    turns: float,
+    length_m: float,
+    inner_m: float,
+    outer_m: float,
+) -> np.ndarray:
     """field_per_ampere at n places from z_from_m on, shape (n,)."""
-    return np.array([
-        field_per_ampere(z_from_m + k * z_step_m, turns, length_m, inner_m, outer_m)
-        for k in range(n)
-    ])
+    return np.array(
+        [
+            field_per_ampere(z_from_m + k * z_step_m, turns, length_m, inner_m, outer_m)
+            for k in range(n)
+        ]
+    )
 
 
 @njit(cache=True)
 def interpolate(table: np.ndarray, start: float, step: float, x: float) -> float:
     """Four-point cubic (Lagrange) interpolation in an even table; the ends continue flat."""
     u = (x - start) / step
-    k = int(math.floor(u))
+    k = int(math.floor(u))  # noqa: RUF046 - compiled code returns a float here
     if k < 1:
         return table[0] if u < 0.0 else table[k] + (u - k) * (table[k + 1] - table[k])
     if k > table.shape[0] - 3:
@@ -54,8 +64,10 @@ def interpolate(table: np.ndarray, start: float, step: float, x: float) -> float
     b = table[k]
     c = table[k + 1]
     d = table[k + 2]
-    return (b + f * ((c - a / 3.0 - b / 2.0 - d / 6.0)
-            + f * (0.5 * (a + c) - b + f * ((d - a) / 6.0 + 0.5 * (b - c)))))
+    return b + f * (
+        (c - a / 3.0 - b / 2.0 - d / 6.0)
+        + f * (0.5 * (a + c) - b + f * ((d - a) / 6.0 + 0.5 * (b - c)))
+    )
 
 
 @njit(cache=True)
@@ -64,7 +76,8 @@ def resistance(r20_ohm: float, alpha_per_k: float, winding_c: float) -> float:
     return r20_ohm * (1.0 + alpha_per_k * (winding_c - ZERO_C_ALPHA))
 
 
-def steady_winding_c(power_w: float, ambient_c: float, winding_to_body: float,
-                     body_to_air: float) -> float:
+def steady_winding_c(
+    power_w: float, ambient_c: float, winding_to_body: float, body_to_air: float
+) -> float:
     """Winding temperature at constant power, degC. Source: series thermal resistances."""
     return ambient_c + power_w * (winding_to_body + body_to_air)

@@ -53,8 +53,17 @@ class Plant:
         self.drive[1] = duty_b_q15 / _FULL_DUTY
         self.drive[2] = 1.0 if enable else 0.0
         params = self.params
-        advance(self.y, params.p, self.m, self.drive, params.table_a, params.table_b, self.work,
-                params.sensors, self.lagged)
+        advance(
+            self.y,
+            params.p,
+            self.m,
+            self.drive,
+            params.table_a,
+            params.table_b,
+            self.work,
+            params.sensors,
+            self.lagged,
+        )
         count(params.sensors, self.lagged, self.seed, int(self.m[k.TICKS]), self.counts)
 
     def advance_off(self, seconds: float) -> None:

@@ -38,8 +38,9 @@ def normal(seed: np.uint64, channel: int, tick: int) -> float:
 
 
 @njit(cache=True)
-def count(sensors: np.ndarray, lagged: np.ndarray, seed: np.uint64, tick: int,
-          counts: np.ndarray) -> None:
+def count(
+    sensors: np.ndarray, lagged: np.ndarray, seed: np.uint64, tick: int, counts: np.ndarray
+) -> None:
     """Raw counts of every channel into counts (int64)."""
     for channel in range(sensors.shape[0]):
         s = sensors[channel]
@@ -48,5 +49,7 @@ def count(sensors: np.ndarray, lagged: np.ndarray, seed: np.uint64, tick: int,
         value = lagged[channel]
         if s[k.S_NOISE] > 0.0:
             value += s[k.S_NOISE] * normal(seed, channel, tick)
-        raw = s[k.S_CL] + (value - s[k.S_LOW]) / (s[k.S_HIGH] - s[k.S_LOW]) * (s[k.S_CH] - s[k.S_CL])
+        raw = s[k.S_CL] + (value - s[k.S_LOW]) / (s[k.S_HIGH] - s[k.S_LOW]) * (
+            s[k.S_CH] - s[k.S_CL]
+        )
         counts[channel] = int(min(max(round(raw), 0.0), s[k.S_FULL]))

@@ -14,7 +14,7 @@ import math
 
 from numba import njit
 
-MU0 = 1.25663706127e-6      # N/A2, CODATA 2022
+MU0 = 1.25663706127e-6  # N/A2, CODATA 2022
 
 
 @njit(cache=True)
@@ -74,19 +74,27 @@ def drag_circle(viscosity_pa_s: float, length_m: float, radius_m: float) -> floa
     return 8.0 * viscosity_pa_s * length_m / (math.pi * radius_m**4)
 
 
-def drag_rectangle(viscosity_pa_s: float, length_m: float, width_m: float, height_m: float) -> float:
+def drag_rectangle(
+    viscosity_pa_s: float, length_m: float, width_m: float, height_m: float
+) -> float:
     """The same for a rectangle, first 40 terms of the exact series, Pa s/m3.
 
     Source: Bruus, Theoretical Microfluidics, 2008, eq. 3.56.
     """
     w, h = max(width_m, height_m), min(width_m, height_m)
     series = sum(math.tanh(n * math.pi * w / (2 * h)) / n**5 for n in range(1, 81, 2))
-    return 12.0 * viscosity_pa_s * length_m / (w * h**3 * (1.0 - 192.0 * h / (math.pi**5 * w) * series))
+    return (
+        12.0
+        * viscosity_pa_s
+        * length_m
+        / (w * h**3 * (1.0 - 192.0 * h / (math.pi**5 * w) * series))
+    )
 
 
 @njit(cache=True)
-def air_spring(x_m: float, area_m2: float, volume_m3: float, ambient_pa: float,
-               exponent: float) -> float:
+def air_spring(
+    x_m: float, area_m2: float, volume_m3: float, ambient_pa: float, exponent: float
+) -> float:
     """Gauge pressure of the gas behind the slug once it has moved x_m away, Pa.
 
     exponent 1: isothermal, 1.4: adiabatic. volume 0: no spring. Source: polytropic gas law.
@@ -94,6 +102,5 @@ def air_spring(x_m: float, area_m2: float, volume_m3: float, ambient_pa: float,
     if volume_m3 <= 0.0:
         return 0.0
     grown = 1.0 + x_m * area_m2 / volume_m3
-    if grown < 0.05:
-        grown = 0.05
+    grown = max(grown, 0.05)
     return ambient_pa * (grown ** (-exponent) - 1.0)

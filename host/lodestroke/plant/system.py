@@ -15,7 +15,7 @@ from .coil import interpolate, resistance
 from .slug import air_spring, magnetic_pressure
 from .valves import acceleration, flow, next_mode
 
-_SMOOTH_M3_S = 1e-8      # flow over which contact-line hysteresis changes sign
+_SMOOTH_M3_S = 1e-8  # flow over which contact-line hysteresis changes sign
 
 
 @njit(cache=True)
@@ -30,8 +30,9 @@ def coil_voltage(duty: float, enable: float, i: float, p: np.ndarray) -> float:
 
 
 @njit(cache=True)
-def slug_pressure(x: float, i_a: float, i_b: float, p: np.ndarray, table_a: np.ndarray,
-                  table_b: np.ndarray) -> float:
+def slug_pressure(
+    x: float, i_a: float, i_b: float, p: np.ndarray, table_a: np.ndarray, table_b: np.ndarray
+) -> float:
     """Magnetic pressure across the slug, towards the chamber, Pa: front face less rear face."""
     front = x + p[k.FACE]
     rear = x - p[k.FACE]
@@ -42,13 +43,21 @@ def slug_pressure(x: float, i_a: float, i_b: float, p: np.ndarray, table_a: np.n
     if p[k.COILS] > 1.0:
         h_front += i_b * interpolate(table_b, start, step, front)
         h_rear += i_b * interpolate(table_b, start, step, rear)
-    return (magnetic_pressure(h_front, p[k.M_S], p[k.CHI])
-            - magnetic_pressure(h_rear, p[k.M_S], p[k.CHI]))
+    return magnetic_pressure(h_front, p[k.M_S], p[k.CHI]) - magnetic_pressure(
+        h_rear, p[k.M_S], p[k.CHI]
+    )
 
 
 @njit(cache=True)
-def rhs(y: np.ndarray, p: np.ndarray, m: np.ndarray, drive: np.ndarray, table_a: np.ndarray,
-        table_b: np.ndarray, dy: np.ndarray) -> None:
+def rhs(
+    y: np.ndarray,
+    p: np.ndarray,
+    m: np.ndarray,
+    drive: np.ndarray,
+    table_a: np.ndarray,
+    table_b: np.ndarray,
+    dy: np.ndarray,
+) -> None:
     """dy/dt into dy, shape (N_Y,). drive: duty a, duty b (-1 to 1), enable (0 or 1)."""
     for c in range(2):
         i = y[k.I_A + c]
@@ -74,9 +83,12 @@ def rhs(y: np.ndarray, p: np.ndarray, m: np.ndarray, drive: np.ndarray, table_a:
     into = flow(m[k.MODE_IN], y[k.Q_IN], across_in, p[k.LEAK_IN])
     out = flow(m[k.MODE_OUT], y[k.Q_OUT], across_out, p[k.LEAK_OUT])
     load = (outlet - p[k.HEAD_OUT]) / p[k.R_OUT]
-    dy[k.Q_IN] = acceleration(m[k.MODE_IN], y[k.Q_IN], across_in, p[k.CLOSE_IN], p[k.R_IN], p[k.L_IN])
+    dy[k.Q_IN] = acceleration(
+        m[k.MODE_IN], y[k.Q_IN], across_in, p[k.CLOSE_IN], p[k.R_IN], p[k.L_IN]
+    )
     dy[k.Q_OUT] = acceleration(
-        m[k.MODE_OUT], y[k.Q_OUT], across_out, p[k.CLOSE_OUT], p[k.R_VO], p[k.L_VO])
+        m[k.MODE_OUT], y[k.Q_OUT], across_out, p[k.CLOSE_OUT], p[k.R_VO], p[k.L_VO]
+    )
     dy[k.P_CH] = (q + into - out) / p[k.C_CH]
     dy[k.P_OUT] = (out - load) / p[k.C_OUT]
     dy[k.V_IN] = into
@@ -116,8 +128,9 @@ def _judge_valves(y: np.ndarray, p: np.ndarray, m: np.ndarray, dt: float) -> Non
         collapse = p[base + 5] * worn_collapse
         m[k.SINCE_IN + side] += dt
         m[k.MIN_MARGIN] = min(m[k.MIN_MARGIN], collapse + dp)
-        new = next_mode(mode, q, dp, m[k.SINCE_IN + side], p[base] * worn, p[base + 1], collapse,
-                        p[base + 6])
+        new = next_mode(
+            mode, q, dp, m[k.SINCE_IN + side], p[base] * worn, p[base + 1], collapse, p[base + 6]
+        )
         if new == k.COLLAPSED and -dp > collapse:
             m[k.SINCE_IN + side] = 0.0
             if mode != k.COLLAPSED:
@@ -128,8 +141,17 @@ def _judge_valves(y: np.ndarray, p: np.ndarray, m: np.ndarray, dt: float) -> Non
 
 
 @njit(cache=True)
-def advance(y: np.ndarray, p: np.ndarray, m: np.ndarray, drive: np.ndarray, table_a: np.ndarray,
-            table_b: np.ndarray, work: np.ndarray, sensors: np.ndarray, lagged: np.ndarray) -> None:
+def advance(
+    y: np.ndarray,
+    p: np.ndarray,
+    m: np.ndarray,
+    drive: np.ndarray,
+    table_a: np.ndarray,
+    table_b: np.ndarray,
+    work: np.ndarray,
+    sensors: np.ndarray,
+    lagged: np.ndarray,
+) -> None:
     """One control tick. work: scratch of shape (6, N_Y); lagged: what each sensor's filter holds."""
     n = int(p[k.SUBSTEPS])
     dt = p[k.TICK_S] / n
@@ -152,7 +174,7 @@ def advance(y: np.ndarray, p: np.ndarray, m: np.ndarray, drive: np.ndarray, tabl
         for channel in range(sensors.shape[0]):
             value = true_value(channel, y, p)
             lagged[channel] += sensors[channel, k.S_LAG] * (value - lagged[channel])
-    m[k.PEAK_C] = max(m[k.PEAK_C], max(y[k.TW_A], y[k.TW_B]))
+    m[k.PEAK_C] = max(m[k.PEAK_C], y[k.TW_A], y[k.TW_B])
     on = 1.0 if drive[2] > 0.0 and abs(drive[0]) > 1e-3 else 0.0
     if on > m[k.WAS_ON]:
         m[k.STROKES] += 1.0

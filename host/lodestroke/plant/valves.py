@@ -23,8 +23,9 @@ def flow(mode: float, q: float, dp: float, leak: float) -> float:
 
 
 @njit(cache=True)
-def acceleration(mode: float, q: float, dp: float, closing: float, resistance: float,
-                 inertance: float) -> float:
+def acceleration(
+    mode: float, q: float, dp: float, closing: float, resistance: float, inertance: float
+) -> float:
     """dq/dt in m3/s2 of a conducting valve; 0 when closed."""
     if mode == CLOSED:
         return 0.0
@@ -34,8 +35,16 @@ def acceleration(mode: float, q: float, dp: float, closing: float, resistance: f
 
 
 @njit(cache=True)
-def next_mode(mode: float, q: float, dp: float, since_s: float, cracking: float, closing: float,
-              collapse: float, reform_s: float) -> float:
+def next_mode(
+    mode: float,
+    q: float,
+    dp: float,
+    since_s: float,
+    cracking: float,
+    closing: float,
+    collapse: float,
+    reform_s: float,
+) -> float:
     """The mode after a step in which dp was reached; since_s counts from the collapse."""
     if -dp > collapse:
         return COLLAPSED

@@ -41,21 +41,39 @@ class Section:
     figures: list[go.Figure] = field(default_factory=list)
 
 
-def write(out: Path, title: str, subtitle: str, verdict: str, bad: bool,
-          sections: list[Section]) -> Path:
+def write(
+    out: Path, title: str, subtitle: str, verdict: str, bad: bool, sections: list[Section]
+) -> Path:
     """Write the page in one go, so that nobody ever opens half of it. Raises PageError."""
     environment = jinja2.Environment(
-        loader=jinja2.PackageLoader("lodestroke.report", "."), autoescape=True)
+        loader=jinja2.PackageLoader("lodestroke.report", "."), autoescape=True
+    )
     text = environment.get_template("page.html.j2").render(
-        title=title, subtitle=subtitle, verdict=verdict, bad=bad, cautions=cautions.CAUTIONS,
-        plotly_js=jinja2.utils.markupsafe.Markup(get_plotlyjs()), version=__version__,
+        title=title,
+        subtitle=subtitle,
+        verdict=verdict,
+        bad=bad,
+        cautions=cautions.CAUTIONS,
+        plotly_js=jinja2.utils.markupsafe.Markup(get_plotlyjs()),
+        version=__version__,
         now=datetime.now(timezone.utc).isoformat(timespec="seconds"),
-        sections=[{
-            "head": section.head, "text": section.text, "tables": section.tables,
-            "plots": [figure.to_html(full_html=False, include_plotlyjs=False,
-                                     config={"displaylogo": False, "responsive": True})
-                      for figure in section.figures],
-        } for section in sections])
+        sections=[
+            {
+                "head": section.head,
+                "text": section.text,
+                "tables": section.tables,
+                "plots": [
+                    figure.to_html(
+                        full_html=False,
+                        include_plotlyjs=False,
+                        config={"displaylogo": False, "responsive": True},
+                    )
+                    for figure in section.figures
+                ],
+            }
+            for section in sections
+        ],
+    )
     part = out.with_name(out.name + f".{os.getpid()}.part")
     try:
         out.parent.mkdir(parents=True, exist_ok=True)
@@ -63,7 +81,11 @@ def write(out: Path, title: str, subtitle: str, verdict: str, bad: bool,
         os.replace(part, out)
     except OSError as fault:
         part.unlink(missing_ok=True)
-        raise PageError("the page cannot be written", at=str(out), got=str(fault),
-                        bound="a file in a folder that can be written",
-                        try_="name another with --out") from fault
+        raise PageError(
+            "the page cannot be written",
+            at=str(out),
+            got=str(fault),
+            bound="a file in a folder that can be written",
+            try_="name another with --out",
+        ) from fault
     return out

@@ -20,8 +20,11 @@ def due_items(bench: Bench) -> list[str]:
     checkup = bench.plan.checkup
     if checkup is None or bench.done == 0 or bench.done % checkup.every_cycles:
         return []
-    have = {row["item"] for row in reader.checkups(bench.logbook, bench.writer.run)
-            if row["after_cycle"] == bench.done}
+    have = {
+        row["item"]
+        for row in reader.checkups(bench.logbook, bench.writer.run)
+        if row["after_cycle"] == bench.done
+    }
     return [item for item in checkup.items if item not in have]
 
 
@@ -89,8 +92,11 @@ def _run_item(bench: Bench, item: str) -> str:
 def _brief(result: dict[str, object]) -> str:
     if not result.get("ok"):
         return f"not measured: {result.get('why')}"
-    return ", ".join(f"{key} {value}" for key, value in result.items()
-                     if not key.startswith("u_") and key not in ("ok", "why"))
+    return ", ".join(
+        f"{key} {value}"
+        for key, value in result.items()
+        if not key.startswith("u_") and key not in ("ok", "why")
+    )
 
 
 _WATCHED = (
@@ -105,8 +111,11 @@ def stop_rule(bench: Bench) -> str:
     rows = reader.checkups(bench.logbook, bench.writer.run)
     for rule, item, quantity in _WATCHED:
         bound = getattr(bench.plan.stop, rule, 0.0)
-        values = [row["result"][quantity] for row in rows
-                  if row["item"] == item and row["result"].get("ok")]
+        values = [
+            row["result"][quantity]
+            for row in rows
+            if row["item"] == item and row["result"].get("ok")
+        ]
         if bound and len(values) > 1 and values[0]:
             change = abs(values[-1] / values[0] - 1.0)
             if change > bound:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import contextlib
 from collections.abc import Callable
 from dataclasses import dataclass, field
 from typing import Protocol
@@ -11,9 +12,9 @@ from lodeboard.wire import messages
 from ..errors import LinkTimeout, Refused
 from ..link import Client, Entry, Restarted, Sample, Text
 
-FLUSH_S = 0.4          # the board resends what is not acknowledged within two seconds
-SILENT_S = 1.5         # beats come five times a second
-QUIET_S = 0.1          # after the end: no sample for so long means that the tail is over
+FLUSH_S = 0.4  # the board resends what is not acknowledged within two seconds
+SILENT_S = 1.5  # beats come five times a second
+QUIET_S = 0.1  # after the end: no sample for so long means that the tail is over
 
 
 class Sink(Protocol):
@@ -23,8 +24,14 @@ class Sink(Protocol):
     def mark(self, fields: dict[str, int]) -> None: ...
     def trip(self, fields: dict[str, int]) -> None: ...
     def seen(self, entry: int) -> None: ...
-    def gap(self, after_cycle: int, why: str, first: int | None = None, last: int | None = None,
-            unnumbered_most: int = 0) -> None: ...
+    def gap(
+        self,
+        after_cycle: int,
+        why: str,
+        first: int | None = None,
+        last: int | None = None,
+        unnumbered_most: int = 0,
+    ) -> None: ...
     def note(self, text: str) -> None: ...
     def samples(self, rows: bytes) -> None: ...
     def recorder(self, entry: int, rows: bytes) -> None: ...
@@ -54,8 +61,14 @@ class Memory:
     def seen(self, entry: int) -> None:
         self.entry = entry
 
-    def gap(self, after_cycle: int, why: str, first: int | None = None, last: int | None = None,
-            unnumbered_most: int = 0) -> None:
+    def gap(
+        self,
+        after_cycle: int,
+        why: str,
+        first: int | None = None,
+        last: int | None = None,
+        unnumbered_most: int = 0,
+    ) -> None:
         """Dry-runs lose nothing."""
 
     def note(self, text: str) -> None:
@@ -75,20 +88,27 @@ class Memory:
 class Outcome:
     """How a program on a board ended."""
 
-    why: str = ""                         # finished, stopped, tripped, restarted
+    why: str = ""  # finished, stopped, tripped, restarted
     end_tick: int = 0
     cycles_done: int = 0
     trips: list[dict[str, int]] = field(default_factory=list)
-    asked_to_stop: str = ""               # what made us stop it
+    asked_to_stop: str = ""  # what made us stop it
     last_tick: int = -1
 
 
 class Collector:
     """Collects from a client into a sink until the program has ended and its tail has come."""
 
-    def __init__(self, client: Client, sink: Sink, token: int, cycles_before: int = 0, *,
-                 stop: Callable[[], str] = lambda: "",
-                 progress: Callable[[Outcome], None] = lambda outcome: None) -> None:
+    def __init__(
+        self,
+        client: Client,
+        sink: Sink,
+        token: int,
+        cycles_before: int = 0,
+        *,
+        stop: Callable[[], str] = lambda: "",
+        progress: Callable[[Outcome], None] = lambda outcome: None,
+    ) -> None:
         self.client = client
         self.sink = sink
         self.token = token
@@ -151,8 +171,12 @@ class Collector:
             self.sink.trip(fields)
             self.outcome.trips.append(fields)
         elif event.kind == "gap":
-            self.sink.gap(self.outcome.cycles_done, "the board's ring was full",
-                          fields["first_cycle"], fields["last_cycle"])
+            self.sink.gap(
+                self.outcome.cycles_done,
+                "the board's ring was full",
+                fields["first_cycle"],
+                fields["last_cycle"],
+            )
             self.sink.seen(event.entry)
         else:
             self.sink.seen(event.entry)
@@ -172,10 +196,9 @@ class Collector:
         reason = self.stop()
         if reason:
             self.outcome.asked_to_stop = reason
-            try:
+            # refused: it ended by itself in the meantime, and its end entry is on the way
+            with contextlib.suppress(Refused):
                 self.client.command("stop")
-            except Refused:
-                pass            # it ended by itself in the meantime: its end entry is on the way
 
     def _silence(self, now_s: float) -> None:
         """Nobody spoke: ask who is there once it lasts."""
@@ -187,9 +210,12 @@ class Collector:
             info = self.client.hello(self.client.saved_entry)
         except LinkTimeout as fault:
             raise LinkTimeout(
-                "the board fell silent in the middle of a run", at=self.client.port.name,
-                got=fault.got, bound=f"a beat within {SILENT_S:g} s",
-                try_="look at its power. It is safe by itself; endure --resume carries on") from fault
+                "the board fell silent in the middle of a run",
+                at=self.client.port.name,
+                got=fault.got,
+                bound=f"a beat within {SILENT_S:g} s",
+                try_="look at its power. It is safe by itself; endure --resume carries on",
+            ) from fault
         self.heard_at = self.client.port.now_s()
         if before is not None and info.boot_nonce != before.boot_nonce:
             self.outcome.why = "restarted"

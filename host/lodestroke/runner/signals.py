@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import contextlib
 import signal
 from types import FrameType, TracebackType
 
@@ -16,14 +17,17 @@ class StopFlag:
 
     def __enter__(self) -> StopFlag:
         for number in (signal.SIGINT, signal.SIGTERM):
-            try:
+            # elsewhere than in the main thread, whoever owns that looks after signals
+            with contextlib.suppress(ValueError):
                 self._before[number] = signal.signal(number, self._take)
-            except ValueError:
-                pass            # not the main thread: whoever owns it looks after signals
         return self
 
-    def __exit__(self, kind: type[BaseException] | None, error: BaseException | None,
-                 trace: TracebackType | None) -> None:
+    def __exit__(
+        self,
+        kind: type[BaseException] | None,
+        error: BaseException | None,
+        trace: TracebackType | None,
+    ) -> None:
         for number, handler in self._before.items():
             signal.signal(number, handler)  # type: ignore[arg-type]
 

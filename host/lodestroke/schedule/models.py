@@ -159,7 +159,7 @@ class Schedule(Table):
     @property
     def cycles_per_pass(self) -> int:
         """Cycles that one pass of the schedule makes."""
-        from .shape import count_cycles  # noqa: PLC0415  (shape builds on these models)
+        from .shape import count_cycles
 
         return count_cycles(self)
 

@@ -47,9 +47,13 @@ class TwinEngine:
             raise PortLost("the twin has been closed", at=self.port.name)
         if self.board.released and not self.board.locked:
             if not self.loop.service.reset_wanted:
-                raise PortLost("the twin gave its port back", at=self.port.name,
-                               got="maintenance", bound="a running firmware",
-                               try_="start it again: reboot()")
+                raise PortLost(
+                    "the twin gave its port back",
+                    at=self.port.name,
+                    got="maintenance",
+                    bound="a running firmware",
+                    try_="start it again: reboot()",
+                )
             self.reboot()
         self.loop.step()
 

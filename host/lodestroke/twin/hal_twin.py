@@ -12,7 +12,7 @@ from lodeboard.wire import messages
 
 from .lockstep import Lockstep
 
-FIRST_US = MASK_US + 1 - 2_000_000      # the clock starts 2 s before its 30-bit wrap
+FIRST_US = MASK_US + 1 - 2_000_000  # the clock starts 2 s before its 30-bit wrap
 TX_MAX = 255
 
 
@@ -22,8 +22,9 @@ class TwinHal(Hal):
     capabilities = messages.CAN_VIRTUAL | messages.CAN_DEADMAN | messages.CAN_WATCHDOG
     window_frames = 32
 
-    def __init__(self, lockstep: Lockstep, board_id: bytes, nonce: int,
-                 store: dict[str, bytes]) -> None:
+    def __init__(
+        self, lockstep: Lockstep, board_id: bytes, nonce: int, store: dict[str, bytes]
+    ) -> None:
         self.lockstep = lockstep
         self.board_id = board_id
         self.boot_nonce = nonce

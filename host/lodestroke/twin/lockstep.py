@@ -8,7 +8,7 @@ from __future__ import annotations
 
 from typing import Any, Protocol
 
-RX_MAX = 32      # bytes for the firmware per exchange: what its link takes in one tick
+RX_MAX = 32  # bytes for the firmware per exchange: what its link takes in one tick
 
 
 class SteppedPlant(Protocol):

@@ -51,8 +51,8 @@ def _bench(config: BoardConfig) -> tuple[Bench, str, int]:
     """(plant in lock-step, board id, heap in KiB) of a rig."""
     if config.still:
         return Lockstep(StillPlant()), "still", HEAP_KIB
-    from ..plant import Plant  # noqa: PLC0415 - slow to import, not always needed
-    from ..rig import load_rig  # noqa: PLC0415
+    from ..plant import Plant
+    from ..rig import load_rig
 
     rig = load_rig(config.rig)
     if rig.board.kind != "virtual":

@@ -31,8 +31,13 @@ class Server(ThreadingHTTPServer):
         try:
             super().__init__(("127.0.0.1", port), Handler)
         except OSError as fault:
-            raise PortError("the page's network port cannot be had", at=f"127.0.0.1:{port}",
-                            got=str(fault), bound="a free port", try_="leave --port out") from fault
+            raise PortError(
+                "the page's network port cannot be had",
+                at=f"127.0.0.1:{port}",
+                got=str(fault),
+                bound="a free port",
+                try_="leave --port out",
+            ) from fault
         self.url = f"http://127.0.0.1:{self.server_address[1]}/"
 
 

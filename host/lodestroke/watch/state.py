@@ -11,7 +11,7 @@ from ..errors import LodestrokeError
 from ..logbook import Logbook, reader
 from ..report.run_page import rig_of
 
-_SHOWN = 2000         # cycles on the page
+_SHOWN = 2000  # cycles on the page
 
 
 def state(logbook: Logbook, run_id: str | None) -> dict[str, Any]:
@@ -20,7 +20,9 @@ def state(logbook: Logbook, run_id: str | None) -> dict[str, Any]:
         run = reader.run(logbook, run_id or "last")
     except LodestrokeError as error:
         return {"run": None, "condition": error.what, "cycles": {}, "trips": []}
-    cycles = reader.cycles(logbook, run["id"], max(0, reader.last_cycle(logbook, run["id"]) - _SHOWN))
+    cycles = reader.cycles(
+        logbook, run["id"], max(0, reader.last_cycle(logbook, run["id"]) - _SHOWN)
+    )
     rig = rig_of(run)
     series: dict[str, Any] = {}
     if cycles:
@@ -36,13 +38,19 @@ def state(logbook: Logbook, run_id: str | None) -> dict[str, Any]:
             "winding_degc": [row["winding_cc"] / 100.0 for row in cycles],
         }
     return {
-        "run": run["id"], "title": run["title"], "kind": run["kind"], "place": run["place"],
+        "run": run["id"],
+        "title": run["title"],
+        "kind": run["kind"],
+        "place": run["place"],
         "target_cycles": run["meta"].get("target_cycles"),
         "done_cycles": cycles[-1]["cycle"] if cycles else 0,
-        "condition": _condition(run), "open": run["ended"] is None,
+        "condition": _condition(run),
+        "open": run["ended"] is None,
         "stop_requested": reader.stop_requested(logbook, run["id"]),
-        "trips": [f"{trip['at'][:19]} UTC: {trips.sentence(trip)}"
-                  for trip in reader.trips(logbook, run["id"])],
+        "trips": [
+            f"{trip['at'][:19]} UTC: {trips.sentence(trip)}"
+            for trip in reader.trips(logbook, run["id"])
+        ],
         "cycles": series,
     }
 
