@@ -1,7 +1,7 @@
 """What the short measurements of an endurance test say, from their sample rows.
 
 Each result has the unit in its key names, standard uncertainties (k = 1) as u_..., and `ok` with
-`why`. rows: structured array of link.rows.SAMPLE, one row per control tick, in order.
+`why`. rows: structured array of rows.SAMPLE, one row per control tick, in order.
 """
 
 from __future__ import annotations

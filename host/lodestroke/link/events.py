@@ -22,7 +22,7 @@ class BoardInfo:
 
 @dataclass(frozen=True)
 class Sample:
-    """One sample row, still packed (lodestroke.link.rows.SAMPLE decodes it)."""
+    """One sample row, still packed (lodestroke.rows.SAMPLE decodes it)."""
 
     body: bytes
 

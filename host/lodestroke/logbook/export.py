@@ -11,7 +11,7 @@ import pyarrow.csv
 import pyarrow.parquet
 
 from ..errors import LogbookError
-from ..link.rows import SAMPLE
+from ..rows import SAMPLE
 from . import reader
 from .open import Logbook
 

@@ -11,7 +11,7 @@ import sqlalchemy as sa
 from sqlalchemy.exc import SQLAlchemyError
 
 from ..errors import LogbookError
-from ..link.rows import SAMPLE, sample_rows
+from ..rows import SAMPLE, sample_rows
 from . import chunks, schema
 from .open import Logbook, worded
 

@@ -2,14 +2,13 @@
 
 from __future__ import annotations
 
-import tempfile
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from .. import trips
 from ..analysis import cycles as account
 from ..logbook import Logbook, reader
-from ..rig import load_rig
+from ..logbook.source import rig_of
 from . import plots
 from .page import Section, Table, write
 
@@ -46,14 +45,6 @@ def write_report(logbook: Logbook, run_id: str, out: str | Path) -> Path:
     title = f"{run['title'] or run['kind']} – run {run['id']}"
     subtitle = f"{run['kind']} on {rig.title}, started {run['started'][:19]} UTC, {run['place']}"
     return write(Path(out), title, subtitle, verdict, bad, sections)
-
-
-def rig_of(run: dict[str, Any]) -> Rig:
-    """The rig as it was when the run was made, from the text kept with it."""
-    with tempfile.TemporaryDirectory() as folder:
-        path = Path(folder) / run["meta"].get("files", {}).get("rig", "rig.toml")
-        path.write_text(run["sources"]["rig"], encoding="utf-8")
-        return load_rig(path)
 
 
 def _verdict(

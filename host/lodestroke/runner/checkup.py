@@ -6,8 +6,8 @@ from typing import TYPE_CHECKING
 
 from .. import trips
 from ..analysis.checkups import evaluate
-from ..link.rows import sample_rows
 from ..logbook import reader
+from ..rows import sample_rows
 from . import session
 from .collect import Collector, Memory, fetch_recorder
 

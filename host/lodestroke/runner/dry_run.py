@@ -12,7 +12,7 @@ import numpy as np
 from .. import trips
 from ..errors import ScheduleError
 from ..link import Client
-from ..link.rows import sample_rows
+from ..rows import sample_rows
 from . import session
 from .collect import Collector, Memory, Outcome
 

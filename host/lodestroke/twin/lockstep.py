@@ -25,12 +25,13 @@ class Lockstep:
     """Advances the plant with the drive of the tick before, and carries the link's bytes both ways.
 
     `inputs` is what the board's input pins show (bit 0: stop input, bit 1: cut-out open); a test or
-    the virtual board's side channel sets it.
+    the virtual board's side channel sets it. `enable` is what the driver's enable line showed last.
     """
 
     def __init__(self, plant: SteppedPlant) -> None:
         self.plant = plant
         self.inputs = 0
+        self.enable = 0
         self.exchanges = 0
         self._down = bytearray()
         self._up = bytearray()
@@ -44,6 +45,7 @@ class Lockstep:
         """
         if self.exchanges:
             self.plant.step(duty_a_q15, duty_b_q15, enable)
+        self.enable = enable
         self.exchanges += 1
         self.board_sent(tx)
         rx = bytes(self._down[:RX_MAX])

@@ -9,7 +9,7 @@ from .. import trips
 from ..analysis import cycles as account
 from ..errors import LodestrokeError
 from ..logbook import Logbook, reader
-from ..report.run_page import rig_of
+from ..logbook.source import rig_of
 
 _SHOWN = 2000  # cycles on the page
 
