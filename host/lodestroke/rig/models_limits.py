@@ -47,7 +47,7 @@ class Limits(Table):
     current: Annotated[Current, Gt(0.0), Le(30.0)]
     over_current: Annotated[Current, Gt(0.0), Le(32.0)]
     coil_temperature: HeatLimit
-    duty_cycle: Annotated[Ratio, Gt(0.0), Le(1.0)] = 0.6
+    duty_cycle: Annotated[Ratio, Ge(0.01), Le(1.0)] = 0.6
     host_silence: Annotated[Time, Ge(0.3), Le(600.0)] = 5.0
     tick_late: Annotated[Time, Ge(0.001), Le(0.5)] = 0.05
     fold_floor: Annotated[Ratio, Ge(0.0), Le(1.0)] = 0.5

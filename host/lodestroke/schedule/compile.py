@@ -180,6 +180,9 @@ class _Compiler:
 
     def _mark(self, step: int, mark: int) -> None:
         """One mark fits a tick: a second one at the same moment waits for the next."""
+        if self.marked and self.hot:
+            raise self._fail(step, "two marks in one moment while a current may flow", f"mark {mark}",
+                             "one mark a moment", "remove one, or put a rest between them")
         if self.marked:
             self._down(step, 1)
         self._emit(board.MARK, step, n=mark)

@@ -124,6 +124,13 @@ def test_two_marks_in_one_moment_wait_a_tick(bench: Rig) -> None:
     assert program.ticks == 501
 
 
+def test_two_marks_in_one_moment_are_refused_while_a_current_may_flow(bench: Rig) -> None:
+    hold = {"hold": {"current": 0.5, "time": 0.2}}
+    error = refusal(schedule(hold, {"mark": 1}, {"mark": 2}, {"rest": 0.5}), bench)
+    assert "two marks in one moment" in error.what
+    compile_program(schedule(hold, {"mark": 1}, {"rest": 0.5}, {"mark": 2}), bench)
+
+
 # Static bounds: (steps, wave, changes of the limits, words, number that must be told)
 STROKE = {"wave": "w", "cycles": 4, "name": "s"}
 BOUNDS = [
