@@ -5,6 +5,7 @@ from struct import pack_into, unpack
 from . import states, trips
 from .compat import collect, const, heap_lock, heap_unlock
 from .cycles import Cycles
+from .hal import Hal
 from .interlocks import Interlocks
 from .limits import Limits
 from .program import Program, Sequencer
@@ -27,7 +28,7 @@ _MARK_BYTES = const(11)
 class Board:
     """Everything behind the link. `hal` is the metal, or what stands in for it (hal.py)."""
 
-    def __init__(self, hal: "object", bundle_id: bytes) -> None:
+    def __init__(self, hal: Hal, bundle_id: bytes) -> None:
         self.hal = hal
         self.bundle_id = bundle_id
         self.state = states.BOOT
@@ -59,9 +60,9 @@ class Board:
 
     def boot(self) -> None:
         """Enable off, the latched trip remembered, then safe or tripped."""
-        self.hal.drive(0, 0, 0)  # type: ignore[attr-defined]
+        self.hal.drive(0, 0, 0)
         self.move("READY")
-        kept = self.hal.load("trip")  # type: ignore[attr-defined]
+        kept = self.hal.load("trip")
         if kept is not None and len(kept) == _TRIP_BYTES:
             row = unpack(_TRIP_FORMAT, kept)
             self.trip_serial = row[1]
@@ -69,7 +70,7 @@ class Board:
                 self.trip_code = row[2]
                 self.trip_body[:] = kept
                 self.move("TRIP")
-        if self.state == states.SAFE and self.hal.reset_was_watchdog:  # type: ignore[attr-defined]
+        if self.state == states.SAFE and self.hal.reset_was_watchdog:
             self.trip(trips.WATCHDOG_RESET, 255, 1, 0)
 
     def move(self, event: str) -> bool:
@@ -97,18 +98,18 @@ class Board:
         if self.limits.blob.fingerprint != fingerprint \
                 or self.program.blob.fingerprint != fingerprint:
             return messages.FINGERPRINT_DIFFERS
-        inputs = self.hal.inputs()  # type: ignore[attr-defined]
+        inputs = self.hal.inputs()
         if inputs & 2:
             return messages.CUTOUT_IS_OPEN
         if inputs & 1:
             return messages.STOP_IS_ACTIVE
         if self.limits.get("deadman_needed") and \
-                not self.hal.capabilities & messages.CAN_DEADMAN:  # type: ignore[attr-defined]
+                not self.hal.capabilities & messages.CAN_DEADMAN:
             return messages.NO_DEADMAN
         self._load()
         if self.sensors.read() or self.sensors.any_bad():
             return messages.NOT_PLAUSIBLE
-        guarded = self.hal.start_guards()  # type: ignore[attr-defined]
+        guarded = self.hal.start_guards()
         if not guarded and self.limits.get("deadman_needed"):
             return messages.NO_DEADMAN
         self.live = False
@@ -250,7 +251,7 @@ class Board:
         self.unlock()
         if self.latch_dirty:
             self.latch_dirty = False
-            self.hal.save("trip", bytes(self.trip_body))  # type: ignore[attr-defined]
+            self.hal.save("trip", bytes(self.trip_body))
 
     def unlock(self) -> None:
         """Allow allocation again."""

@@ -85,7 +85,8 @@ class Blob:
 
     def crc_now(self) -> int:
         """CRC-32 of what is stored now."""
-        return binascii.crc32(bytes(self.data[: self.length]))
+        crc32: int = binascii.crc32(bytes(self.data[: self.length]))
+        return crc32
 
     def check(self, length: int, crc32: int) -> bool:
         """Whether the first length bytes have this CRC."""
@@ -104,9 +105,9 @@ class Limits:
 
     def __init__(self) -> None:
         self.blob = Blob(BLOB_BYTES)
-        self.values = array("i", [0] * N_FIELDS)
-        self.active = array("i", [0] * N_FIELDS)
-        self.shadow = array("i", [-1] * N_FIELDS)
+        self.values: "array[int]" = array("i", [0] * N_FIELDS)
+        self.active: "array[int]" = array("i", [0] * N_FIELDS)
+        self.shadow: "array[int]" = array("i", [-1] * N_FIELDS)
         self.at = 0
 
     def seal(self, length: int, crc32: int, fingerprint: bytes) -> bool:

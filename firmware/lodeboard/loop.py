@@ -18,7 +18,7 @@ class Loop:
         self.board = board
         self.hal = board.hal
         self.service = Service(board)
-        self.due_us = self.hal.now_us()  # type: ignore[attr-defined]
+        self.due_us = self.hal.now_us()
         self.period_us = 1000
         self.last_us = self.due_us
 
@@ -27,13 +27,13 @@ class Loop:
         hal = self.hal
         board = self.board
         period_us = self.period_us
-        now_us = hal.now_us()  # type: ignore[attr-defined]
+        now_us = hal.now_us()
         late_us = us_since(now_us, self.due_us)
         if late_us < 0:
             late_us = 0
         self._pace(now_us)
         board.tick.run(late_us)
-        hal.feed()  # type: ignore[attr-defined]
+        hal.feed()
         self.due_us = us_after(self.due_us, period_us)
         if late_us >= period_us:
             # missed periods are counted, never caught up in a burst
@@ -42,10 +42,10 @@ class Loop:
         board.settle()
         while True:
             self.service.poll()
-            left_us = us_since(self.due_us, hal.now_us())  # type: ignore[attr-defined]
+            left_us = us_since(self.due_us, hal.now_us())
             if left_us <= 0:
                 return
-            hal.idle(left_us)  # type: ignore[attr-defined]
+            hal.idle(left_us)
 
     def _pace(self, now_us: int) -> None:
         """The period from the limits, and the worst gap between ticks of this run."""
@@ -74,7 +74,7 @@ class Loop:
             self._tell(fault)
             raise
         finally:
-            self.hal.drive(0, 0, 0)  # type: ignore[attr-defined]
+            self.hal.drive(0, 0, 0)
         self.service.flush()
 
     def _tell(self, fault: BaseException) -> None:

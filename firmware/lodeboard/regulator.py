@@ -5,6 +5,8 @@ now, its first-order answer to the targets so far, so that a steep rise does not
 up and overshoot. The integral stops where the duty is clamped. step() allocates nothing.
 """
 
+from .limits import Limits
+
 
 class Regulator:
     """One bridge. Gains are Q8 duty counts per mA; response_q8 is 1 - exp(-tick R/L)."""
@@ -21,9 +23,9 @@ class Regulator:
         self.target_ma = 0        # as last stepped
         self.expected_q4 = 0      # mA in Q4: what the coil should carry by now
 
-    def load(self, limits: "object") -> None:
+    def load(self, limits: Limits) -> None:
         """Take gains and clamps."""
-        get = limits.get  # type: ignore[attr-defined]
+        get = limits.get
         self.kp_q8 = get("kp_q8")
         self.ki_q8 = get("ki_q8")
         self.feed_q8 = get("feed_q8")

@@ -7,6 +7,7 @@ last good value stands in.
 from array import array
 
 from . import trips
+from .hal import Hal
 from .limits import CHANNEL_STRIDE, INDEX, N_CHANNELS, Limits
 
 _BAD_TICKS = INDEX["sensor_bad_ticks"]
@@ -15,7 +16,7 @@ _BAD_TICKS = INDEX["sensor_bad_ticks"]
 class Sensors:
     """values[channel] after each read(); the first implausible channel in `channel`."""
 
-    def __init__(self, hal: "object", limits: Limits) -> None:
+    def __init__(self, hal: Hal, limits: Limits) -> None:
         self.hal = hal
         self.limits = limits
         self.counts = array("i", [0] * N_CHANNELS)
@@ -46,7 +47,7 @@ class Sensors:
     def read(self) -> int:
         """Read, convert, check; a trip code or 0. The order of channels decides which is first."""
         counts = self.counts
-        self.hal.read_counts(counts)  # type: ignore[attr-defined]
+        self.hal.read_counts(counts)
         v = self.limits.values
         bad_ticks = v[_BAD_TICKS]
         found = 0

@@ -13,6 +13,10 @@ from .rings import ROW_BYTES
 from .wire import messages
 from .wire.frames import UP_MAX, DownReader, build_up
 
+TYPE_CHECKING = False
+if TYPE_CHECKING:
+    from .board import Board
+
 _RX_BYTES = const(32)              # taken per poll
 _FRAMES = const(2)                 # sent per poll
 _BEAT_US = const(200000)
@@ -38,11 +42,11 @@ _BODY = 2                          # a down frame's body starts behind type and 
 class Service:
     """Serves one board over its Hal's bytes."""
 
-    def __init__(self, board: "object") -> None:
+    def __init__(self, board: "Board") -> None:
         self.board = board
-        self.hal = board.hal  # type: ignore[attr-defined]
-        self.journal = board.journal  # type: ignore[attr-defined]
-        self.samples = board.samples  # type: ignore[attr-defined]
+        self.hal = board.hal
+        self.journal = board.journal
+        self.samples = board.samples
         self.reader = DownReader()
         self.window = getattr(self.hal, "window_frames", 4)
         self.out = bytearray(UP_MAX)
@@ -71,7 +75,7 @@ class Service:
     def poll(self) -> None:
         """Take a few octets, send at most two frames."""
         for _ in range(_RX_BYTES):
-            if self.board.released:  # type: ignore[attr-defined]
+            if self.board.released:
                 break              # what comes now is for the prompt
             octet = self.hal.read_byte()
             if octet < 0:
@@ -81,7 +85,7 @@ class Service:
                 self._dispatch()
         if self.reader.interrupt:
             self.reader.interrupt = False
-            self.board.interrupt()  # type: ignore[attr-defined]
+            self.board.interrupt()
         for _ in range(_FRAMES):
             if not self._send_one():
                 break
@@ -99,7 +103,7 @@ class Service:
         buf = self.reader.buf
         code = buf[0]
         number = buf[1]
-        self.board.heard()  # type: ignore[attr-defined]
+        self.board.heard()
         if code == _BEAT:
             self._take_beat(buf)
             return
@@ -153,11 +157,11 @@ class Service:
         """A command that gets a reply; its result."""
         board = self.board
         if code == _GO:
-            return board.go(  # type: ignore[attr-defined, no-any-return]
+            return board.go(
                 _le30(buf, _BODY), _le30(buf, _BODY + 4), _le30(buf, _BODY + 8))
         if code == _CLEAR:
             serial = buf[_BODY + 1] | (buf[_BODY + 2] << 8)
-            return board.clear(buf[_BODY], serial)  # type: ignore[attr-defined, no-any-return]
+            return board.clear(buf[_BODY], serial)
         if code == _STREAM:
             self.samples.every = buf[_BODY] | (buf[_BODY + 1] << 8)
             return messages.OK
@@ -167,28 +171,28 @@ class Service:
         if code == _RECALL:
             return self._recall(buf)
         if code == _PUT or code == _SEAL or code == _ARM or code == _RESET:
-            if board.state != states.SAFE or board.locked:  # type: ignore[attr-defined]
-                if code != _RESET or board.state != states.TRIPPED:  # type: ignore[attr-defined]
+            if board.state != states.SAFE or board.locked:
+                if code != _RESET or board.state != states.TRIPPED:
                     return messages.WRONG_STATE
             return self._act_safe(code, buf)
         if code == _MAINTAIN:
-            return board.maintain()  # type: ignore[attr-defined, no-any-return]
+            return board.maintain()
         name = _SIMPLE.get(code)
         if name is None:
             return messages.UNKNOWN_COMMAND
-        return board.simple(name)  # type: ignore[attr-defined, no-any-return]
+        return board.simple(name)
 
     def _act_safe(self, code: int, buf: bytearray) -> int:
         """Commands that only a safe board takes; the heap is free here."""
         board = self.board
         if code == _RESET:
-            board.released = True  # type: ignore[attr-defined]
+            board.released = True
             self.reset_wanted = True
             return messages.OK
         if code == _ARM:
             fingerprint, crc32 = unpack_from("<8sI", buf, _BODY)
-            return board.arm(fingerprint, crc32)  # type: ignore[attr-defined, no-any-return]
-        store = board.limits if buf[_BODY] == messages.BLOB_LIMITS else board.program  # type: ignore[attr-defined]
+            return board.arm(fingerprint, crc32)
+        store = board.limits if buf[_BODY] == messages.BLOB_LIMITS else board.program
         if code == _PUT:
             _, offset, count, data = unpack_from("<BHB32s", buf, _BODY)
             return messages.OK if store.blob.put(offset, data, count) else messages.OUT_OF_BOUNDS
@@ -197,7 +201,7 @@ class Service:
 
     def _recall(self, buf: bytearray) -> int:
         """Stream rows of the flight recorder; only once it stands still."""
-        if self.board.live:  # type: ignore[attr-defined]
+        if self.board.live:
             return messages.BUSY
         first = buf[_BODY] | (buf[_BODY + 1] << 8)
         count = buf[_BODY + 2] | (buf[_BODY + 3] << 8)
@@ -261,9 +265,9 @@ class Service:
         """Who we are; while the heap is locked the nonce and token are small integers already."""
         board = self.board
         pack_into("<I8s8s8sIIIBB", self.out, 4, messages.WIRE_VERSION,
-                  board.bundle_id, board.limits.blob.fingerprint,  # type: ignore[attr-defined]
-                  self.hal.board_id, self.hal.boot_nonce, board.run_token,  # type: ignore[attr-defined]
-                  self.journal.saved + 1, board.state, self.hal.capabilities)  # type: ignore[attr-defined]
+                  board.bundle_id, board.limits.blob.fingerprint,
+                  self.hal.board_id, self.hal.boot_nonce, board.run_token,
+                  self.journal.saved + 1, board.state, self.hal.capabilities)
         return self._close(0x80, 42)
 
     def _compose_beat(self, now_us: int) -> bool:
@@ -272,12 +276,12 @@ class Service:
         self.beat_due = False
         self.beat_us = now_us
         dropped = self.samples.dropped
-        late = board.late_ticks  # type: ignore[attr-defined]
+        late = board.late_ticks
         pack_into("<IIIIHHHHBBB", self.out, 4, self.samples.written,
-                  board.cycles.number, self.journal.newest, board.run_token,  # type: ignore[attr-defined]
+                  board.cycles.number, self.journal.newest, board.run_token,
                   dropped if dropped < 65535 else 65535, late if late < 65535 else 65535,
-                  board.worst_gap_us, board.trip_serial, board.sequencer.step_now,  # type: ignore[attr-defined]
-                  board.state, board.trip_code)  # type: ignore[attr-defined]
+                  board.worst_gap_us, board.trip_serial, board.sequencer.step_now,
+                  board.state, board.trip_code)
         return self._close(0x82, 27)
 
     def _compose_entry(self, now_us: int) -> bool:

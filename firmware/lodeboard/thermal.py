@@ -14,6 +14,7 @@ Source: lumped two-node network, explicit Euler; dt is far below the winding's t
 """
 
 from .compat import const
+from .limits import Limits
 
 _EVERY = const(64)
 _LIMIT_MCQ = const(307200000)          # 300 degC in Q10: the estimate saturates, it never wraps
@@ -37,9 +38,9 @@ class Coil:
         self.body_leak_q = 0
         self.warm = False
 
-    def load(self, limits: "object") -> None:
+    def load(self, limits: Limits) -> None:
         """Take the coefficients; the temperatures start at ambient once and are then kept."""
-        get = limits.get  # type: ignore[attr-defined]
+        get = limits.get
         self.ambient_mcq = get("ambient_mc") << 10
         self.r20_mohm = get("r20_mohm")
         self.alpha_ppm = get("alpha_ppm")

@@ -8,6 +8,10 @@ from . import states, trips
 from .limits import CHAMBER, COIL_A, COIL_B, INDEX, INLET, OUTLET
 from .program import CYCLE, ENDED, RUNS
 
+TYPE_CHECKING = False
+if TYPE_CHECKING:
+    from .board import Board
+
 _TARGET_MAX = INDEX["target_max_ma"]
 _FOLD_MIN = INDEX["fold_min_q8"]
 _FOLD_FALL = INDEX["fold_fall_q8"]
@@ -19,20 +23,20 @@ _LATE = INDEX["late_us"]
 class Tick:
     """Runs on a board's parts; holds the targets, the fold-back and the ramp."""
 
-    def __init__(self, board: "object") -> None:
+    def __init__(self, board: "Board") -> None:
         self.board = board
-        self.hal = board.hal  # type: ignore[attr-defined]
-        self.limits = board.limits  # type: ignore[attr-defined]
-        self.program = board.program  # type: ignore[attr-defined]
-        self.sequencer = board.sequencer  # type: ignore[attr-defined]
-        self.sensors = board.sensors  # type: ignore[attr-defined]
-        self.interlocks = board.interlocks  # type: ignore[attr-defined]
-        self.thermal = board.thermal  # type: ignore[attr-defined]
-        self.regulator_a = board.regulator_a  # type: ignore[attr-defined]
-        self.regulator_b = board.regulator_b  # type: ignore[attr-defined]
-        self.cycles = board.cycles  # type: ignore[attr-defined]
-        self.journal = board.journal  # type: ignore[attr-defined]
-        self.samples = board.samples  # type: ignore[attr-defined]
+        self.hal = board.hal
+        self.limits = board.limits
+        self.program = board.program
+        self.sequencer = board.sequencer
+        self.sensors = board.sensors
+        self.interlocks = board.interlocks
+        self.thermal = board.thermal
+        self.regulator_a = board.regulator_a
+        self.regulator_b = board.regulator_b
+        self.cycles = board.cycles
+        self.journal = board.journal
+        self.samples = board.samples
         self.target_a_ma = 0
         self.target_b_ma = 0
         self.fold_q8 = 256
@@ -53,7 +57,7 @@ class Tick:
         """One tick, late_us after it was due."""
         code = self.sensors.read()
         self._judge(code, late_us)
-        state = self.board.state  # type: ignore[attr-defined]
+        state = self.board.state
         if state == states.RUNNING:
             self._sequence()
         elif self.ramping or state == states.PAUSED or state == states.STOPPING:
@@ -64,31 +68,33 @@ class Tick:
     def _judge(self, code: int, late_us: int) -> None:
         """Anything wrong, in the order of first-out; only while armed or still ramping down."""
         board = self.board
-        state = board.state  # type: ignore[attr-defined]
+        state = board.state
         self.thermal.step(self.sensors.values[COIL_A])
         if not self.ramping and state not in states.ENERGISED:
             return
         self.silent_ticks += 1
-        watch = self.sensors
-        if code == 0:
-            watch = self.interlocks
-            code = self.interlocks.judge(self.thermal.winding_mc, self.regulator_a.target_ma)
         if code:
-            board.trip(code, watch.channel, watch.value, watch.limit)  # type: ignore[attr-defined]
+            watch = self.sensors
+            board.trip(code, watch.channel, watch.value, watch.limit)
+            return
+        locks = self.interlocks
+        code = locks.judge(self.thermal.winding_mc, self.regulator_a.target_ma)
+        if code:
+            board.trip(code, locks.channel, locks.value, locks.limit)
             return
         inputs = self.hal.inputs()
         if inputs & 2:
-            board.trip(trips.CUTOUT_OPEN, 255, 1, 1)  # type: ignore[attr-defined]
+            board.trip(trips.CUTOUT_OPEN, 255, 1, 1)
         elif not self.limits.patrol():
-            board.trip(trips.LIMITS_CORRUPT, 255, self.limits.at, 0)  # type: ignore[attr-defined]
+            board.trip(trips.LIMITS_CORRUPT, 255, self.limits.at, 0)
         elif not self.program.patrol():
-            board.trip(trips.PROGRAM_CORRUPT, 255, self.program.at, 0)  # type: ignore[attr-defined]
+            board.trip(trips.PROGRAM_CORRUPT, 255, self.program.at, 0)
         elif late_us >= self.limits.values[_LATE]:
-            board.trip(trips.TICK_LATE, 255, late_us, self.limits.values[_LATE])  # type: ignore[attr-defined]
+            board.trip(trips.TICK_LATE, 255, late_us, self.limits.values[_LATE])
         elif inputs & 1:
-            board.trip(trips.STOP_INPUT, 255, 1, 1)  # type: ignore[attr-defined]
+            board.trip(trips.STOP_INPUT, 255, 1, 1)
         elif self.silent_ticks >= self.silence_ticks:
-            board.trip(trips.HOST_SILENT, 255, self.silent_ticks, self.silence_ticks)  # type: ignore[attr-defined]
+            board.trip(trips.HOST_SILENT, 255, self.silent_ticks, self.silence_ticks)
 
     def _sequence(self) -> None:
         """The program's targets for this tick, folded back where a soft level holds the stroke."""
@@ -97,14 +103,14 @@ class Tick:
         sequencer.mark = -1
         found = sequencer.step()
         if sequencer.cycle_mark and self.cycles.is_open:
-            last = self.board.last_cycle  # type: ignore[attr-defined]
+            last = self.board.last_cycle
             if last and self.cycles.number + 1 >= last:
                 found = ENDED
         if found != RUNS:
             if found == ENDED:
-                self.board.finish()  # type: ignore[attr-defined]
+                self.board.finish()
             else:
-                self.board.trip(trips.PROGRAM_CORRUPT, 255, sequencer.pc, 0)  # type: ignore[attr-defined]
+                self.board.trip(trips.PROGRAM_CORRUPT, 255, sequencer.pc, 0)
             return
         v = self.limits.active
         fold_q8 = self.fold_q8
@@ -141,12 +147,12 @@ class Tick:
         self.target_b_ma = _towards_zero(self.target_b_ma, step_ma)
         if self.target_a_ma == 0 and self.target_b_ma == 0:
             self.ramping = False
-            self.board.down()  # type: ignore[attr-defined]
+            self.board.down()
 
     def _drive(self) -> None:
         """Duties while the state allows current, otherwise nothing and enable off."""
         x = self.sensors.values
-        state = self.board.state  # type: ignore[attr-defined]
+        state = self.board.state
         if self.ramping or state == states.RUNNING or state == states.PAUSED \
                 or state == states.STOPPING:
             self.hal.drive(
@@ -166,12 +172,12 @@ class Tick:
     def _account(self) -> None:
         """The cycle's account, its marks, and this tick's row, while a run or its tail lasts."""
         board = self.board
-        if not board.live:  # type: ignore[attr-defined]
+        if not board.live:
             return
         x = self.sensors.values
         sequencer = self.sequencer
         cycles = self.cycles
-        state = board.state  # type: ignore[attr-defined]
+        state = board.state
         winding_cc = self.thermal.winding_mc // 10
         tick = self.samples.written
         if state == states.RUNNING:
@@ -180,7 +186,7 @@ class Tick:
                 if sequencer.cycle_mark == CYCLE:
                     cycles.begin(tick)
             if sequencer.mark >= 0:
-                board.mark(sequencer.mark, tick, sequencer.step_now)  # type: ignore[attr-defined]
+                board.mark(sequencer.mark, tick, sequencer.step_now)
         if cycles.is_open:
             locks = self.interlocks
             cycles.step(x[CHAMBER], x[OUTLET], locks.outlet_reverse_pa, locks.inlet_reverse_pa,
@@ -188,7 +194,7 @@ class Tick:
         fold_q8 = self.fold_q8 if self.fold_q8 < 256 else 255
         self.samples.push(x[COIL_A], x[COIL_B], self.target_a_ma, self.regulator_a.duty_q15,
                           x[CHAMBER], x[OUTLET], x[INLET], winding_cc, fold_q8, state)
-        board.tail()  # type: ignore[attr-defined]
+        board.tail()
 
 
 def _towards_zero(value_ma: int, step_ma: int) -> int:

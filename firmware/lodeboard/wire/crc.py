@@ -14,7 +14,7 @@ _POLY = const(0xEDB88320)          # reflected 0x04C11DB7
 _OUT = const(512)
 
 
-def make_table() -> array:
+def make_table() -> "array[int]":
     """256 low halves, 256 high halves, then two places for the result."""
     work = array("H", [0] * 514)
     for i in range(256):
@@ -26,7 +26,7 @@ def make_table() -> array:
     return work
 
 
-def halves(buf: bytearray, start: int, n: int, work: array) -> None:
+def halves(buf: bytearray, start: int, n: int, work: "array[int]") -> None:
     """CRC of n bytes from start; low half to work[512], high half to work[513]."""
     lo = 0xFFFF
     hi = 0xFFFF
@@ -42,7 +42,9 @@ _work = make_table()
 _halves = halves
 if MICROPYTHON:
     try:
-        from .crc_fast import halves as _halves  # type: ignore[no-redef]
+        from . import crc_fast
+
+        _halves = crc_fast.halves  # type: ignore[assignment]
     except (ImportError, SyntaxError):
         pass                       # no viper emitter on this port: the bytecode does it
 
@@ -75,4 +77,4 @@ def holds(buf: bytearray, start: int, n: int) -> bool:
         lo = crc & 0xFFFF
         hi = crc >> 16
     at = start + n
-    return buf[at] | (buf[at + 1] << 8) == lo and buf[at + 2] | (buf[at + 3] << 8) == hi
+    return bool(buf[at] | (buf[at + 1] << 8) == lo and buf[at + 2] | (buf[at + 3] << 8) == hi)

@@ -4,7 +4,7 @@ import micropython
 
 
 @micropython.viper
-def halves(buf: ptr8, start: int, n: int, work: ptr16):  # noqa: F821
+def halves(buf: ptr8, start: int, n: int, work: ptr16):  # type: ignore[no-untyped-def]  # noqa: F821
     lo = 0xFFFF
     hi = 0xFFFF
     i = start

@@ -6,6 +6,7 @@ Each result has the unit in its key names, standard uncertainties (k = 1) as u_.
 
 from __future__ import annotations
 
+import math
 from collections.abc import Callable
 from typing import TYPE_CHECKING, Any
 
@@ -85,7 +86,7 @@ def _inlet_cracking(across: np.ndarray, u: float) -> Result:
 
 
 def _u_pressure_noise(rig: Rig, name: str) -> float:
-    return float(getattr(rig.sensors, name).noise) / _SMOOTH**0.5
+    return float(getattr(rig.sensors, name).noise) / math.sqrt(_SMOOTH)
 
 
 def stroke_volume(rows: np.ndarray, rig: Rig) -> Result:

@@ -37,9 +37,9 @@ runs = sa.Table(
 )
 
 
-def _of_run(*more: sa.Column, unique: tuple[str, ...] = ()) -> list[sa.SchemaItem]:  # type: ignore[type-arg]
+def _of_run(*more: sa.Column, unique: tuple[str, ...] = ()) -> list[sa.schema.SchemaItem]:  # type: ignore[type-arg]
     """Columns that every table of a run's rows shares."""
-    items: list[sa.SchemaItem] = [
+    items: list[sa.schema.SchemaItem] = [
         sa.Column("id", sa.Integer, primary_key=True),
         sa.Column("run", sa.String(16), sa.ForeignKey("runs.id"), nullable=False, index=True),
         *more,

@@ -9,6 +9,7 @@ from pathlib import Path
 from typing import Any
 
 import jinja2
+import markupsafe
 import plotly.graph_objects as go
 from plotly.offline import get_plotlyjs
 
@@ -54,7 +55,7 @@ def write(
         verdict=verdict,
         bad=bad,
         cautions=cautions.CAUTIONS,
-        plotly_js=jinja2.utils.markupsafe.Markup(get_plotlyjs()),
+        plotly_js=markupsafe.Markup(get_plotlyjs()),
         version=__version__,
         now=datetime.now(timezone.utc).isoformat(timespec="seconds"),
         sections=[

@@ -29,7 +29,7 @@ class TwinHal(Hal):
         self.board_id = board_id
         self.boot_nonce = nonce
         self.store = store
-        self.time_us = FIRST_US
+        self.time_us: int = FIRST_US
         self.duty_a = 0
         self.duty_b = 0
         self.enable = 0
