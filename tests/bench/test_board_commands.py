@@ -42,7 +42,7 @@ def board_command(
         try:
             yield process, process.stdout.readline().strip()
         finally:
-            process.kill()
+            process.terminate()
 
 
 @pytest.mark.parametrize("how", [signal.SIGTERM, signal.SIGINT])

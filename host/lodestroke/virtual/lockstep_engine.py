@@ -6,6 +6,7 @@ import os
 import select
 import shutil
 import tempfile
+import weakref
 from pathlib import Path
 from typing import Any
 
@@ -37,6 +38,8 @@ class VirtualEngine:
         self.heap_kib = int(getattr(rig.board, "heap", None) or HEAP_KIB * 1024) // 1024
         self.boots = 0
         self._folder = Path(tempfile.mkdtemp(prefix="lodestroke-"))
+        # also when nobody calls close(): the interpreter ends with our pipes, the folder would stay
+        weakref.finalize(self, shutil.rmtree, self._folder, ignore_errors=True)
         self._said = self._folder / "said.txt"
         self._board: Interpreter | None = None
         try:
