@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import difflib
 import importlib
+import signal
 import sys
 
 import click
@@ -68,11 +69,17 @@ def group(ctx: click.Context, logbook: str | None) -> None:
     ctx.obj = {"logbook": logbook}
 
 
+def _like_ctrl_c(_number: int, _frame: object) -> None:
+    """SIGTERM, until a command takes it over: the same clean end as Ctrl-C."""
+    raise KeyboardInterrupt
+
+
 def main() -> None:
     """Entry point: no traceback ever reaches the user."""
     from ..errors import Interrupted, LodestrokeError
     from .common import crash, fail
 
+    signal.signal(signal.SIGTERM, _like_ctrl_c)
     try:
         group(prog_name="lodestroke", standalone_mode=False)
     except click.exceptions.Exit as leaving:

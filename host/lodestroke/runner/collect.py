@@ -14,6 +14,7 @@ from ..link import Client, Entry, Restarted, Sample, Text
 
 FLUSH_S = 0.4  # the board resends what is not acknowledged within two seconds
 SILENT_S = 1.5  # beats come five times a second
+LEAST_S, MOST_S = 0.4, 10.0  # after the end, waited at least and at most
 QUIET_S = 0.1  # after the end: no sample for so long means that the tail is over
 
 
@@ -142,8 +143,9 @@ class Collector:
             return True
         if self.ended_at is None:
             return False
-        now_s = self.client.port.now_s()
-        return now_s - max(self.ended_at, self.sample_at) > QUIET_S and now_s - self.ended_at > 0.4
+        since_s = self.client.port.now_s() - self.ended_at
+        quiet_s = self.client.port.now_s() - max(self.ended_at, self.sample_at)
+        return (quiet_s > QUIET_S and since_s > LEAST_S) or since_s > MOST_S
 
     def _take(self, event: object, now_s: float) -> None:
         if isinstance(event, Sample):

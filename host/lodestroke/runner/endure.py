@@ -15,7 +15,7 @@ from typing import TYPE_CHECKING, Any
 
 from .. import trips
 from ..errors import LinkError, LodestrokeError
-from ..link import Client, open_port
+from ..link import Client
 from ..logbook import Logbook, Writer, new_run, reader
 from . import record, session
 from .checkup import due_items, run_checkups, stop_rule
@@ -25,6 +25,7 @@ from .pick import resumable
 from .signals import StopFlag
 
 if TYPE_CHECKING:
+    from ..link import Port
     from ..rig import Rig
     from ..schedule import Plan, Schedule
 
@@ -47,6 +48,7 @@ class Bench:
     flag: StopFlag
     done: int = 0
     segment: int = 0
+    token: int = 0  # of the last GO that the board got, from us or from somebody else
     trips: list[dict[str, int]] = field(default_factory=list)
 
     def stop(self) -> str:
@@ -65,10 +67,28 @@ class Bench:
             {
                 "nonce": info.boot_nonce,
                 "token": token,
+                "before": self.token,
                 "phase": phase,
                 "segment": self.segment,
                 "base": self.done,
                 "at": time.time(),
+                "kind": "endure",
+            }
+        )
+        self.writer.flush()
+        self.token = token
+
+    def settled(self, token: int) -> None:
+        """The program of this GO has ended and all of it is on disk: nothing of it can be lost."""
+        info = self.client.info
+        assert info is not None
+        self.writer.resume_state(
+            {
+                "nonce": info.boot_nonce,
+                "token": token,
+                "phase": "between",
+                "segment": self.segment,
+                "base": self.done,
                 "kind": "endure",
             }
         )
@@ -80,7 +100,7 @@ def endure(
     rig: Rig,
     plan: Plan,
     schedule: Schedule,
-    port: str,
+    port: str | Port,
     bundle_id: bytes,
     *,
     resume: bool = False,
@@ -92,19 +112,23 @@ def endure(
 
     Raises LodestrokeError of every kind; what was pumped is on record first.
     """
-    client = Client(open_port(port, dtr=rig.board.port.dtr))
+    client = session.connect(port, rig)
     try:
-        run_id = resumable(logbook, rig, plan) if resume else None
-        state = reader.run(logbook, run_id)["resume"] if run_id else {}
-        info = client.hello()
-        session.check_board(info, bundle_id, port)
-        if run_id is None:
-            run_id = _new(logbook, rig, plan, port, bundle_id, info.board_id)
-        with Writer(logbook, run_id) as writer, StopFlag() as flag:
-            bench = Bench(
-                logbook, writer, client, rig, plan, schedule, bundle_id, say, progress, flag
-            )
-            return _guarded(bench, state, resume, clear)
+        with StopFlag() as flag:
+            run_id = resumable(logbook, rig, plan) if resume else None
+            state = reader.run(logbook, run_id)["resume"] if run_id else {}
+            info = client.hello()
+            session.check_board(info, bundle_id, client.port.name)
+            if run_id is None:
+                settle(logbook, client, drain(client), say)
+                session.clear_trip(client, session.look(client), clear)
+                run_id = _new(logbook, rig, plan, client.port.name, bundle_id, info.board_id)
+            with Writer(logbook, run_id) as writer:
+                bench = Bench(
+                    logbook, writer, client, rig, plan, schedule, bundle_id, say, progress, flag
+                )
+                bench.token = info.run_token
+                return _guarded(bench, state, resume, clear)
     finally:
         client.close()
 
@@ -124,19 +148,14 @@ def _guarded(
 ) -> dict[str, Any]:
     """The run itself; however it ends, its row says how."""
     try:
-        end = _resume(bench, state, clear) if resume else _first(bench, clear)
+        end = _resume(bench, state, clear) if resume else ""
         while not end:
             end = _next_stretch(bench)
     except LodestrokeError as fault:
+        session.quench(bench.client)  # before the disk, which may be what failed
         _close(bench, fault.what)
         raise
     return _close(bench, end)
-
-
-def _first(bench: Bench, clear: str | None) -> str:
-    settle(bench.logbook, bench.client, drain(bench.client), bench.say)
-    session.clear_trip(bench.client, session.look(bench.client), clear)
-    return ""
 
 
 def _resume(bench: Bench, state: dict[str, Any], clear: str | None) -> str:
@@ -150,7 +169,9 @@ def _resume(bench: Bench, state: dict[str, Any], clear: str | None) -> str:
     assert info is not None
     ours = state.get("nonce") == info.boot_nonce and state.get("token") == info.run_token
     writer.begin(info.boot_nonce, client.saved_entry, bench.segment)
-    end = _adopt(bench, state) if ours else _restarted_meanwhile(bench, state)
+    end = _adopt(bench, state) if ours else _strange(bench, state)
+    if end:
+        return end
     beat = session.look(client)
     if beat.state == "tripped":
         name = trips.name(beat.fields["trip_code"])
@@ -159,7 +180,7 @@ def _resume(bench: Bench, state: dict[str, Any], clear: str | None) -> str:
         )
         writer.note(f"trip {name} cleared on resume")
     bench.say(f"resuming {writer.run} after cycle {bench.done}")
-    return end
+    return ""
 
 
 def _adopt(bench: Bench, state: dict[str, Any]) -> str:
@@ -183,11 +204,14 @@ def _adopt(bench: Bench, state: dict[str, Any]) -> str:
     return ""
 
 
-def _restarted_meanwhile(bench: Bench, state: dict[str, Any]) -> str:
-    """The board's memory is gone, or has served somebody else: a gap, with its bound."""
+def _strange(bench: Bench, state: dict[str, Any]) -> str:
+    """The board does not know our last GO: it lost its memory, served others, or never got it."""
+    info = bench.client.info
+    assert info is not None
     entries = drain(bench.client)
     settle(bench.logbook, bench.client, entries, bench.say)
-    if state.get("phase") == "cycles":
+    never_went = info.boot_nonce == state.get("nonce") and info.run_token == state.get("before")
+    if state.get("phase") == "cycles" and not never_went:
         _gap(bench, time.time() - state.get("at", time.time()))
     return ""
 
@@ -201,6 +225,7 @@ def _gap(bench: Bench, away_s: float) -> None:
     most_s = min(away_s, bench.rig.limits.host_silence + 2 * FLUSH_S)
     most = min(math.ceil(most_s / cycle_s) + 1, bench.plan.target_cycles - bench.done)
     bench.writer.gap(bench.done, "the board restarted", unnumbered_most=max(most, 0))
+    bench.writer.resume_state({"phase": "gap on record", "segment": bench.segment})
     bench.writer.flush()
     bench.say(f"the board restarted: a gap of at most {max(most, 0)} cycles after {bench.done}")
 
@@ -213,9 +238,10 @@ def _next_stretch(bench: Bench) -> str:
         return end or stop_rule(bench)
     if bench.done >= bench.plan.target_cycles:
         return "target reached"
-    if bench.stop():
-        return bench.stop()
-    return _cycles(bench)
+    gaps = len(reader.gaps(bench.logbook, bench.writer.run))
+    if bench.plan.stop.gaps and gaps >= bench.plan.stop.gaps:
+        return f"stop rule: {gaps} gaps on record, bound {bench.plan.stop.gaps}"
+    return bench.stop() or _cycles(bench)
 
 
 def _cycles(bench: Bench) -> str:
@@ -256,10 +282,25 @@ def _collect(bench: Bench, token: int) -> str:
             bound="a board that stays powered",
             try_="look at its supply; then endure --resume",
         )
+    bench.settled(token)
     if outcome.why == "tripped":
         fetch_recorder(bench.client, bench.writer, outcome)
-        return "tripped: " + trips.name(outcome.trips[-1]["code"]) if outcome.trips else "tripped"
+        return _after_trip(bench, outcome)
     return outcome.asked_to_stop
+
+
+def _after_trip(bench: Bench, outcome: Outcome) -> str:
+    """The plan says how many trips end the run; until then each is cleared by its name."""
+    name = trips.name(outcome.trips[-1]["code"]) if outcome.trips else "unknown"
+    if (
+        outcome.asked_to_stop
+        or len(reader.trips(bench.logbook, bench.writer.run)) >= bench.plan.stop.trips
+    ):
+        return "tripped: " + name
+    session.clear_trip(bench.client, session.look(bench.client), name)
+    bench.writer.note(f"trip {name} cleared: the plan ends at {bench.plan.stop.trips} trips")
+    bench.say(f"tripped ({name}); the plan goes on")
+    return ""
 
 
 def _close(bench: Bench, end: str) -> dict[str, Any]:

@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING, Any
 
 from .. import trips
 from ..errors import LodestrokeError
-from ..link import Client, open_port
+from ..link import Client
 from ..logbook import Logbook, Writer, new_run, reader
 from . import record, session
 from .collect import Collector, Outcome, fetch_recorder
@@ -15,6 +15,7 @@ from .leftovers import drain, settle
 from .signals import StopFlag
 
 if TYPE_CHECKING:
+    from ..link import Port
     from ..rig import Rig
     from ..schedule import Schedule
 
@@ -25,7 +26,7 @@ def run(
     logbook: Logbook,
     rig: Rig,
     schedule: Schedule,
-    port: str,
+    port: str | Port,
     bundle_id: bytes,
     *,
     clear: str | None = None,
@@ -39,10 +40,10 @@ def run(
     from ..schedule import compile_program
 
     program = compile_program(schedule, rig)
-    client = Client(open_port(port, dtr=rig.board.port.dtr))
+    client = session.connect(port, rig)
     try:
         info = client.hello()
-        session.check_board(info, bundle_id, port)
+        session.check_board(info, bundle_id, client.port.name)
         settle(logbook, client, drain(client), say)
         session.clear_trip(client, session.look(client), clear)
         session.load(client, rig, program, EVERY_TICKS)
@@ -50,7 +51,12 @@ def run(
         sources = record.sources_of(rig, **files)
         meta = record.describe(rig, sources, files, bundle_id, info.board_id)
         run_id = new_run(
-            logbook, "run", title=schedule.title, place=port, meta=meta, sources=sources
+            logbook,
+            "run",
+            title=schedule.title,
+            place=client.port.name,
+            meta=meta,
+            sources=sources,
         )
         with Writer(logbook, run_id) as writer:
             return _execute(logbook, writer, client, rig, program, progress)
@@ -82,10 +88,14 @@ def _execute(
         collector = Collector(client, writer, token, stop=stop, progress=progress)
         outcome = collector.outcome
         try:
-            session.start(client, rig, program, token)
-            outcome = collector.run()
+            if not flag.raised:
+                session.start(client, rig, program, token)
+                outcome = collector.run()
+            else:
+                outcome.asked_to_stop = "interrupted"
             fetch_recorder(client, writer, outcome)
         except LodestrokeError as fault:
+            session.quench(client)
             _close(writer, outcome, rig, fault.what)
             raise
     return _close(writer, outcome, rig, outcome.asked_to_stop or outcome.why)

@@ -2,16 +2,18 @@
 
 from __future__ import annotations
 
+import contextlib
 import secrets
 from typing import TYPE_CHECKING
 
 from lodeboard import trips as trip_table
 
 from .. import trips
-from ..errors import LinkError, Tripped
-from ..link import Beat, BoardInfo, Client
+from ..errors import LinkError, LodestrokeError, Tripped
+from ..link import Beat, BoardInfo, Client, open_port
 
 if TYPE_CHECKING:
+    from ..link import Port
     from ..rig import Rig
     from ..schedule import Program
 
@@ -19,6 +21,13 @@ if TYPE_CHECKING:
 def new_token() -> int:
     """A number that ties what a board reports to one run; 30 bits, never 0."""
     return secrets.randbelow((1 << 30) - 1) + 1
+
+
+def connect(port: str | Port, rig: Rig) -> Client:
+    """A client on a port that is named, or that is open already. Raises PortError."""
+    if isinstance(port, str):
+        port = open_port(port, dtr=rig.board.port.dtr)
+    return Client(port)
 
 
 def check_board(info: BoardInfo, bundle_id: bytes, port: str) -> None:
@@ -94,6 +103,12 @@ def start(
     """Arm and go: cycles count from before + 1; last ends the program once it is complete."""
     client.command("arm", fingerprint=rig.fingerprint, program_crc32=program.crc32)
     client.command("go", run_token=token, cycles_before=before, last_cycle=last)
+
+
+def quench(client: Client) -> None:
+    """Something failed on our side: ask the board to stop, and let be if it cannot hear."""
+    with contextlib.suppress(LodestrokeError):
+        client.command("stop")
 
 
 HOST_SILENT = trip_table.TABLE[trip_table.HOST_SILENT][0]
