@@ -73,36 +73,31 @@ class Interlocks:
             return self._fires(trips.OVER_CURRENT, COIL_A, current_ma, over_ma)
         if x[COIL_B] >= over_ma or -x[COIL_B] >= over_ma:
             return self._fires(trips.OVER_CURRENT, COIL_B, x[COIL_B], over_ma)
-        soft = False
-        if outlet_reverse_pa >= v[_OUTLET_REVERSE_SOFT]:
-            soft = True
-            if outlet_reverse_pa >= v[_OUTLET_REVERSE_HARD]:
-                return self._fires(
-                    trips.OUTLET_REVERSE, OUTLET, outlet_reverse_pa, v[_OUTLET_REVERSE_HARD])
-        if inlet_reverse_pa >= v[_INLET_REVERSE_SOFT]:
-            soft = True
-            if inlet_reverse_pa >= v[_INLET_REVERSE_HARD]:
-                return self._fires(
-                    trips.INLET_REVERSE, INLET, inlet_reverse_pa, v[_INLET_REVERSE_HARD])
-        if chamber_pa >= v[_CHAMBER_HIGH_SOFT]:
-            soft = True
-            if chamber_pa >= v[_CHAMBER_HIGH_HARD]:
-                return self._fires(
-                    trips.CHAMBER_HIGH, CHAMBER, chamber_pa, v[_CHAMBER_HIGH_HARD])
-        if chamber_pa <= v[_CHAMBER_LOW_SOFT]:
-            soft = True
-            if chamber_pa <= v[_CHAMBER_LOW_HARD]:
-                return self._fires(trips.CHAMBER_LOW, CHAMBER, chamber_pa, v[_CHAMBER_LOW_HARD])
-        if outlet_pa >= v[_OUTLET_HIGH_SOFT]:
-            soft = True
-            if outlet_pa >= v[_OUTLET_HIGH_HARD]:
-                return self._fires(trips.OUTLET_HIGH, OUTLET, outlet_pa, v[_OUTLET_HIGH_HARD])
+        # hard before soft, each on its own: a schedule step may tighten the one below the other
+        if outlet_reverse_pa >= v[_OUTLET_REVERSE_HARD]:
+            return self._fires(
+                trips.OUTLET_REVERSE, OUTLET, outlet_reverse_pa, v[_OUTLET_REVERSE_HARD])
+        if inlet_reverse_pa >= v[_INLET_REVERSE_HARD]:
+            return self._fires(
+                trips.INLET_REVERSE, INLET, inlet_reverse_pa, v[_INLET_REVERSE_HARD])
+        if chamber_pa >= v[_CHAMBER_HIGH_HARD]:
+            return self._fires(trips.CHAMBER_HIGH, CHAMBER, chamber_pa, v[_CHAMBER_HIGH_HARD])
+        if chamber_pa <= v[_CHAMBER_LOW_HARD]:
+            return self._fires(trips.CHAMBER_LOW, CHAMBER, chamber_pa, v[_CHAMBER_LOW_HARD])
+        if outlet_pa >= v[_OUTLET_HIGH_HARD]:
+            return self._fires(trips.OUTLET_HIGH, OUTLET, outlet_pa, v[_OUTLET_HIGH_HARD])
         if outlet_pa <= v[_OUTLET_LOW_HARD]:
             return self._fires(trips.OUTLET_LOW, OUTLET, outlet_pa, v[_OUTLET_LOW_HARD])
-        if winding_mc >= v[_HOT_SOFT]:
-            soft = True
-            if winding_mc >= v[_HOT_HARD]:
-                return self._fires(trips.COIL_HOT, COIL_A, winding_mc, v[_HOT_HARD])
+        if winding_mc >= v[_HOT_HARD]:
+            return self._fires(trips.COIL_HOT, COIL_A, winding_mc, v[_HOT_HARD])
+        self.soft = (
+            outlet_reverse_pa >= v[_OUTLET_REVERSE_SOFT]
+            or inlet_reverse_pa >= v[_INLET_REVERSE_SOFT]
+            or chamber_pa >= v[_CHAMBER_HIGH_SOFT]
+            or chamber_pa <= v[_CHAMBER_LOW_SOFT]
+            or outlet_pa >= v[_OUTLET_HIGH_SOFT]
+            or winding_mc >= v[_HOT_SOFT]
+        )
         if target_a_ma >= v[_COIL_OPEN_MA] and current_ma + current_ma < target_a_ma:
             self.open_ticks += 1
             if self.open_ticks >= v[_COIL_OPEN_TICKS]:
@@ -111,7 +106,6 @@ class Interlocks:
             self.open_ticks = 0
         if x[SUPPLY] <= v[_SUPPLY_LOW]:
             return self._fires(trips.SUPPLY_LOW, SUPPLY, x[SUPPLY], v[_SUPPLY_LOW])
-        self.soft = soft
         return 0
 
     def _fires(self, code: int, channel: int, value: int, limit: int) -> int:
