@@ -213,8 +213,11 @@ def _limit_heat(limits: Limits, ambient: Any) -> Iterator[Problem]:
                       f"above the room, {ambient.temperature:g} degC", "raise the limit")
 
 
-@check("limits", "valves")
-def _reverse_before_collapse(limits: Limits, valves: Valves) -> Iterator[Problem]:
+@check("limits", "valves", "board")
+def _reverse_before_collapse(limits: Limits, valves: Valves, board: Board) -> Iterator[Problem]:
+    """Only where there is a valve to lose: a simulated bench may show what would happen."""
+    if board.kind == "virtual":
+        return
     for side, row in (("outlet", valves.outlet), ("inlet", valves.inlet)):
         least = min(valve.collapse for valve in row)
         pair = getattr(limits, f"{side}_reverse")

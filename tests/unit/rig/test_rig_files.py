@@ -101,13 +101,14 @@ def test_rig_that_cannot_be_is_refused_with_the_bound(
     assert error.try_
 
 
-def test_trip_beyond_collapse_is_refused_with_both_numbers(edit: Edit) -> None:
-    text = edit().read_text(encoding="utf-8")
-    row = next(line for line in text.split("\n") if line.startswith("outlet_reverse"))
-    error = refusal(edit((row, 'outlet_reverse = { soft = "18 cmH2O", hard = "95 cmH2O" }')))
+def test_trip_beyond_collapse_is_refused_with_both_numbers_on_a_real_bench(edit: Edit) -> None:
+    raised = ('outlet_reverse = { soft = "18 cmH2O", hard = "24 cmH2O" }',
+              'outlet_reverse = { soft = "18 cmH2O", hard = "95 cmH2O" }')
+    error = refusal(edit(raised, name="bench-rp2040.toml"))
     assert "the trip comes after the outlet valve's collapse" in error.text()
     assert '"95 cmH2O"' in error.text()
     assert "kPa" in error.bound
+    assert load_rig(edit(raised)).limits.outlet_reverse.hard > 9000   # simulated: nothing to lose
 
 
 def test_second_coil_needs_its_current_sensor(edit: Edit) -> None:
