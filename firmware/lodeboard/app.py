@@ -3,12 +3,13 @@
 The slot holds `board.json` (which Hal, which pins) and `bundle.txt` (the bundle id in hexadecimal).
 """
 
+from . import storage  # isort: skip - before everything else, see there
 import json
 from binascii import unhexlify
 
 from . import states
 from .board import Board
-from .compat import const
+from .compat import collect_often, const
 from .hal import Hal
 from .loop import Loop
 
@@ -56,7 +57,8 @@ def run(folder: str, prove: "Callable[[], None]") -> None:
     hal = open_hal(folder)
     with open(folder + "/bundle.txt") as file:
         bundle_id = unhexlify(file.read().strip())
-    board = Board(hal, bundle_id)
+    board = Board(hal, bundle_id, storage.SAMPLE_ROWS)
+    collect_often(-1)
     board.boot()
     loop = ProvingLoop(board, prove)
     hal.own_port(True)

@@ -28,7 +28,8 @@ _MARK_BYTES = const(11)
 class Board:
     """Everything behind the link. `hal` is the metal, or what stands in for it (hal.py)."""
 
-    def __init__(self, hal: Hal, bundle_id: bytes) -> None:
+    def __init__(self, hal: Hal, bundle_id: bytes, storage: "bytearray | None" = None) -> None:
+        collect()                    # importing leaves garbage; the buffers below are large
         self.hal = hal
         self.bundle_id = bundle_id
         self.state = states.BOOT
@@ -41,7 +42,7 @@ class Board:
         self.regulator_a = Regulator()
         self.regulator_b = Regulator()
         self.journal = Journal()
-        self.samples = Samples()
+        self.samples = Samples(storage)
         self.cycles = Cycles(self.journal)
         self.run_token = 0
         self.last_cycle = 0          # 0: the program's own end decides

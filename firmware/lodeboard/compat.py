@@ -9,6 +9,11 @@ try:
     from micropython import heap_unlock as heap_unlock
 
     collect = gc.collect
+
+    def collect_often(every_bytes: int) -> None:
+        """Collect garbage after so many bytes; -1 gives the interpreter's own way back."""
+        gc.threshold(every_bytes)
+
 except ImportError:
     MICROPYTHON = False
 
@@ -23,3 +28,6 @@ except ImportError:
 
     def collect():  # type: ignore
         return 0
+
+    def collect_often(every_bytes: int) -> None:
+        """CPython looks after its memory by itself."""

@@ -41,13 +41,13 @@ class Program:
     def __init__(self) -> None:
         self.blob = Blob(RECORD_BYTES * MAX_RECORDS)
         self.count = 0
-        self.op = array("i", [0] * MAX_RECORDS)
-        self.arg = array("i", [0] * MAX_RECORDS)
-        self.step = array("i", [0] * MAX_RECORDS)
-        self.a_ma = array("i", [0] * MAX_RECORDS)
-        self.b_ma = array("i", [0] * MAX_RECORDS)
-        self.n = array("i", [0] * MAX_RECORDS)
-        self.shadow = array("i", [0] * MAX_RECORDS)
+        self.op = array("B", bytes(MAX_RECORDS))
+        self.arg = array("B", bytes(MAX_RECORDS))
+        self.step = array("H", bytes(2 * MAX_RECORDS))
+        self.a_ma = array("h", bytes(2 * MAX_RECORDS))
+        self.b_ma = array("h", bytes(2 * MAX_RECORDS))
+        self.n = array("i", bytes(4 * MAX_RECORDS))
+        self.shadow = array("i", bytes(4 * MAX_RECORDS))
         self.at = 0
 
     def seal(self, length: int, crc32: int, fingerprint: bytes) -> bool:

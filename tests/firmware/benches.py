@@ -32,7 +32,7 @@ class Bench:
         self.board = Board(self.hal, b"bundle00")
         self.board.boot()
         self.loop = Loop(self.board)
-        blob, crc32 = limits_blob(RIG)
+        blob = limits_blob(RIG)[0]
         values = list(struct.unpack(f"<{limits.N_FIELDS}i", blob))
         for name, value in (changes or {}).items():
             values[limits.INDEX[name]] = value
