@@ -3,82 +3,32 @@
 from __future__ import annotations
 
 import os
-from collections.abc import Iterable
+from collections.abc import Iterable, Iterator
 from pathlib import Path
 
 import pyarrow as pa
 import pyarrow.csv
 import pyarrow.parquet
 
-from ..errors import LogbookError
-from ..rows import SAMPLE
-from . import reader
+from ..errors import LodestrokeError, LogbookError
+from . import columns, reader
 from .open import Logbook
+from .source import rig_of
 
 FORMATS = ("csv", "parquet")
+NAMES = ("cycles", "trips", "checkups", "marks", "gaps", "samples", "recorder")
 
-_I, _T = pa.int64(), pa.string()
-_CYCLES = [
-    (name, _I)
-    for name in (
-        "cycle",
-        "tick",
-        "duration_ticks",
-        "chamber_max_pa",
-        "chamber_min_pa",
-        "chamber_mean_pa",
-        "outlet_max_pa",
-        "outlet_mean_pa",
-        "outlet_reverse_max_pa",
-        "inlet_reverse_max_pa",
-        "held_ticks",
-        "coil_peak_ma",
-        "winding_cc",
-        "step",
-    )
-]
-_TRIPS = [
-    ("trip_serial", _I),
-    ("code", _I),
-    ("name", _T),
-    ("channel", _I),
-    ("stop_category", _I),
-    ("tick", _I),
-    ("value", _I),
-    ("limit", _I),
-    ("step", _I),
-    ("at", _T),
-]
-_MARKS = [("tick", _I), ("mark", _I), ("step", _I)]
-_GAPS = [
-    ("after_cycle", _I),
-    ("first_cycle", _I),
-    ("last_cycle", _I),
-    ("unnumbered_most", _I),
-    ("why", _T),
-    ("at", _T),
-]
-_CHECKUPS = [
-    ("after_cycle", _I),
-    ("item", _T),
-    ("at", _T),
-    ("quantity", _T),
-    ("value", pa.float64()),
-    ("text", _T),
-]
-# units that a bare column name does not carry: spelled out in the files
-_RENAME = {
-    "at": "at_utc",
-    "winding_cc": "winding_centi_degc",
-    "tick": "tick_index",
-    "cycle": "cycle",
-}
+_File = tuple[pa.Schema, Iterable[pa.Table]]
 
 
 def export(
     logbook: Logbook, run: str, fmt: str, folder: str | Path, *, force: bool = False
 ) -> list[Path]:
-    """Write a run's tables into a folder; the files written. Raises LogbookError."""
+    """Write a run's tables into a folder; the files written. Raises LogbookError.
+
+    All files are written beside their places first and moved there together at the end, so that a
+    failure (a damaged chunk, a full disk) leaves what was there before. Memory stays bounded.
+    """
     if fmt not in FORMATS:
         raise LogbookError(
             "unknown format",
@@ -87,96 +37,111 @@ def export(
             bound=", ".join(FORMATS),
             try_="choose one of these",
         )
-    run = reader.resolve(logbook, run)
-    out = Path(folder)
-    names = ("cycles", "trips", "checkups", "marks", "gaps", "samples")
-    targets = {name: out / f"{name}.{fmt}" for name in names}
+    files = _files(logbook, reader.run(logbook, run))
+    targets = {name: Path(folder) / f"{name}.{fmt}" for name in files}
+    parts = {
+        name: target.with_name(f"{target.name}.{os.getpid()}.part")
+        for name, target in targets.items()
+    }
     try:
-        out.mkdir(parents=True, exist_ok=True)
-        for target in targets.values():
-            if target.exists() and not force:
-                raise LogbookError(
-                    "a file of that name is there already",
-                    at=str(target),
-                    got="an existing file",
-                    bound="a new file",
-                    try_="name another folder with --out, or use --force",
-                )
-        tables = _tables(logbook, run)
-        for name, (columns, rows) in tables.items():
-            _write(targets[name], fmt, [_table(columns, rows)], _schema(columns))
-        batches = (
-            _samples(row["segment"], rows) for row, rows in reader.sample_chunks(logbook, run)
-        )
-        _write(targets["samples"], fmt, batches, _SAMPLE_SCHEMA)
+        _prepare(Path(folder), targets.values(), force)
+        for name, (schema, tables) in files.items():
+            _write(parts[name], fmt, schema, tables)
+        for name, target in targets.items():
+            os.replace(parts[name], target)
     except OSError as fault:
         raise LogbookError(
             "the export cannot be written",
-            at=str(out),
+            at=str(folder),
             got=str(fault),
             bound="a folder that can be written, with room on its disk",
             try_="name another with --out",
         ) from fault
+    finally:
+        _sweep(parts.values())
     return list(targets.values())
 
 
-def _tables(
-    logbook: Logbook, run: str
-) -> dict[str, tuple[list[tuple[str, pa.DataType]], list[reader.Row]]]:
-    flat = []
-    for row in reader.checkups(logbook, run):
-        for quantity, value in row["result"].items():
-            number = isinstance(value, int | float) and not isinstance(value, bool)
-            flat.append(
-                {
-                    **row,
-                    "quantity": quantity,
-                    "value": float(value) if number else None,
-                    "text": None if number else str(value),
-                }
+def _prepare(folder: Path, targets: Iterable[Path], force: bool) -> None:
+    folder.mkdir(parents=True, exist_ok=True)
+    for target in targets:
+        if target.exists() and not force:
+            raise LogbookError(
+                "a file of that name is there already",
+                at=str(target),
+                got="an existing file",
+                bound="a new file",
+                try_="name another folder with --out, or use --force",
             )
-    return {
-        "cycles": (_CYCLES, reader.cycles(logbook, run)),
-        "trips": (_TRIPS, reader.trips(logbook, run)),
-        "checkups": (_CHECKUPS, flat),
-        "marks": (_MARKS, reader.marks(logbook, run)),
-        "gaps": (_GAPS, reader.gaps(logbook, run)),
+
+
+def _sweep(parts: Iterable[Path]) -> None:
+    for part in parts:
+        try:
+            part.unlink(missing_ok=True)
+        except OSError:  # its folder could not be made in the first place
+            return
+
+
+def _files(logbook: Logbook, run: reader.Row) -> dict[str, _File]:
+    """What goes into each file; tables are read when they are written."""
+    tick_ms, run_id = _tick_ms(run), run["id"]
+    rows = {
+        "cycles": reader.cycle_pages(logbook, run_id),
+        "trips": [reader.trips(logbook, run_id)],
+        "checkups": [columns.quantities(reader.checkups(logbook, run_id))],
+        "marks": [reader.marks(logbook, run_id)],
+        "gaps": [reader.gaps(logbook, run_id)],
     }
+    files: dict[str, _File] = {
+        name: (columns.schema(name), _pages(name, pages, tick_ms)) for name, pages in rows.items()
+    }
+    files["samples"] = (
+        columns.sample_schema("segment"),
+        (
+            columns.sample_table("segment", row["segment"], samples, tick_ms)
+            for row, samples in reader.sample_chunks(logbook, run_id)
+        ),
+    )
+    files["recorder"] = (
+        columns.sample_schema("trip_serial"),
+        _recorders(logbook, run_id, tick_ms),
+    )
+    return files
 
 
-def _schema(columns: list[tuple[str, pa.DataType]]) -> pa.Schema:
-    return pa.schema([(_RENAME.get(name, name), kind) for name, kind in columns])
+def _pages(
+    name: str, pages: Iterable[Iterable[reader.Row]], tick_ms: float | None
+) -> Iterator[pa.Table]:
+    for page in pages:
+        yield columns.table(name, page, tick_ms)
 
 
-def _table(columns: list[tuple[str, pa.DataType]], rows: list[reader.Row]) -> pa.Table:
-    arrays = [pa.array([row[name] for row in rows], kind) for name, kind in columns]
-    return pa.Table.from_arrays(arrays, schema=_schema(columns))
+def _recorders(logbook: Logbook, run_id: str, tick_ms: float | None) -> Iterator[pa.Table]:
+    for trip in reader.trips(logbook, run_id):
+        try:
+            rows = reader.recorder(trip)
+        except ValueError as fault:
+            raise LogbookError(
+                "a flight recorder is damaged",
+                at=f"{logbook.name}, run {run_id}",
+                got=f"trip {trip['trip_serial']}: {fault}",
+                bound="the checksum it was written with",
+                try_="lodestroke log verify, then restore a copy of the logbook",
+            ) from fault
+        yield columns.sample_table("trip_serial", trip["trip_serial"], rows, tick_ms)
 
 
-_SAMPLE_SCHEMA = pa.schema(
-    [("segment", pa.int64())]
-    + [(_RENAME.get(name, name), pa.int64()) for name in SAMPLE.names or ()]
-)
-
-
-def _samples(segment: int, rows) -> pa.Table:  # type: ignore[no-untyped-def]
-    arrays = [pa.array([segment] * len(rows), pa.int64())]
-    arrays += [pa.array(rows[name].astype("int64")) for name in SAMPLE.names or ()]
-    return pa.Table.from_arrays(arrays, schema=_SAMPLE_SCHEMA)
-
-
-def _write(target: Path, fmt: str, tables: Iterable[pa.Table], schema: pa.Schema) -> None:
-    """Table by table into a temporary file, then into place: a reader never sees half of it."""
-    part = target.with_name(target.name + f".{os.getpid()}.part")
+def _tick_ms(run: reader.Row) -> float | None:
+    """The run's tick period from its kept rig; None when there is no rig that can be read."""
     try:
-        if fmt == "csv":
-            with pa.csv.CSVWriter(str(part), schema) as writer:
-                for table in tables:
-                    writer.write_table(table)
-        else:
-            with pa.parquet.ParquetWriter(str(part), schema) as writer:
-                for table in tables:
-                    writer.write_table(table)
-        os.replace(part, target)
-    finally:
-        part.unlink(missing_ok=True)
+        return float(rig_of(run).board.tick) * 1000
+    except (LodestrokeError, KeyError, OSError):
+        return None
+
+
+def _write(part: Path, fmt: str, schema: pa.Schema, tables: Iterable[pa.Table]) -> None:
+    kind = pa.csv.CSVWriter if fmt == "csv" else pa.parquet.ParquetWriter
+    with kind(str(part), schema) as writer:
+        for table in tables:
+            writer.write_table(table)

@@ -2,17 +2,26 @@
 
 from __future__ import annotations
 
+import json
+import math
 import os
+import time
+from collections.abc import Iterator
+from contextlib import contextmanager
 from pathlib import Path
+from typing import Any
 
 import sqlalchemy as sa
 from sqlalchemy import event
-from sqlalchemy.exc import ArgumentError, DBAPIError, NoSuchModuleError, SQLAlchemyError
+from sqlalchemy.exc import ArgumentError, NoSuchModuleError, OperationalError, SQLAlchemyError
 
 from ..errors import LogbookError
 from . import schema
+from .faults import refused, worded
 
 ENVIRONMENT = "LODESTROKE_LOGBOOK"
+WAIT_S = 10.0  # for somebody else's transaction
+_WRITES = "lodestroke_writes"
 
 
 def default_path() -> Path:
@@ -23,127 +32,215 @@ def default_path() -> Path:
 
 
 class Logbook:
-    """An open logbook: its engine and the name that users know it by."""
+    """An open logbook: its engine and the name that users know it by (never with a password)."""
 
     def __init__(self, engine: sa.Engine, name: str) -> None:
         self.engine = engine
         self.name = name
+        self._writing = engine.execution_options(**{_WRITES: True})
+
+    @contextmanager
+    def read(self) -> Iterator[sa.Connection]:
+        """One consistent view of everything. Raises LogbookError for what the database says."""
+        try:
+            with self.engine.connect() as connection:
+                yield connection
+        except SQLAlchemyError as fault:
+            raise worded(self.name, fault) from fault
+
+    @contextmanager
+    def write(self) -> Iterator[sa.Connection]:
+        """One transaction: on disk when the block has been left, or nothing of it is.
+
+        Raises LogbookError for what the database says.
+        """
+        try:
+            with self._writing.begin() as connection:
+                yield connection
+        except SQLAlchemyError as fault:
+            raise worded(self.name, fault) from fault
 
     def close(self) -> None:
         """Let go of the database."""
         self.engine.dispose()
 
+    def __enter__(self) -> Logbook:
+        return self
 
-def open_logbook(where: str | Path | None = None, *, create: bool = True) -> Logbook:
+    def __exit__(self, *_: object) -> None:
+        self.close()
+
+
+def open_logbook(
+    where: str | Path | None = None, *, create: bool = True, wait_s: float = WAIT_S
+) -> Logbook:
     """Open the logbook at a path or URL, or the one that environment or default name.
 
-    create=False: a file that is not there is an error. Raises LogbookError.
+    create=False: a file that is not there is an error. wait_s: how long to wait for another writer.
+    Raises LogbookError.
     """
     place = str(where or os.environ.get(ENVIRONMENT) or default_path())
-    url = place if "://" in place else _file_url(place, create)
+    url = _url(place, create)
+    name = place if "://" not in place else url.render_as_string(hide_password=True)
+    engine = _engine(url, name, wait_s)
     try:
-        engine = sa.create_engine(url, connect_args=_arguments(url))
-        if engine.dialect.name == "sqlite":
-            event.listen(engine, "connect", _settings)
-        with engine.begin() as connection:
-            _settle_schema(connection, place)
-    except NoSuchModuleError as fault:
-        raise _bad(
-            place, str(fault), "sqlite, postgresql", "name a database that is known"
-        ) from fault
-    except ModuleNotFoundError as fault:
-        raise _bad(
-            place, f"no driver: {fault.name}", "an installed driver", f"pip install {fault.name}"
-        ) from fault
-    except (ArgumentError, ValueError) as fault:
-        raise _bad(
-            place, str(fault).splitlines()[0], "a path or a database URL", "mend it"
-        ) from fault
+        _settle(engine, name, wait_s)
     except SQLAlchemyError as fault:
-        raise worded(place, fault) from fault
-    return Logbook(engine, place)
+        engine.dispose()
+        raise worded(name, fault) from fault
+    except LogbookError:
+        engine.dispose()
+        raise
+    return Logbook(engine, name)
 
 
-def _file_url(place: str, create: bool) -> str:
-    path = Path(place).expanduser()
-    if path.is_dir():
-        raise _bad(place, "a folder", "a file", f"name a file, {path / 'logbook.db'} say")
-    if not path.exists():
-        if not create:
-            raise _bad(
-                place,
-                "no such file",
-                "a logbook",
-                "name it with --logbook, or make one by running something",
-            )
-        try:
+def _url(place: str, create: bool) -> sa.URL:
+    if "://" not in place:
+        return sa.URL.create("sqlite", database=str(_file(place, Path(place).expanduser(), create)))
+    try:
+        url = sa.make_url(place)
+    except (ArgumentError, ValueError) as fault:
+        raise refused(
+            place.split("://", maxsplit=1)[0] + "://…",
+            "an address that cannot be read",
+            "a path, or a database URL",
+            "write it as postgresql://user@host/database",
+        ) from fault
+    if url.get_backend_name() == "sqlite":
+        if url.database in (None, "", ":memory:"):
+            raise refused(place, "a logbook in memory", "a logbook on a disk", "name a file")
+        return url.set(database=str(_file(place, Path(url.database or ""), create)))
+    return url
+
+
+def _file(place: str, path: Path, create: bool) -> Path:
+    """The path of a SQLite file, its folder made. Raises LogbookError."""
+    try:
+        if path.is_dir():
+            raise refused(place, "a folder", "a file", f"name a file, {path / 'logbook.db'} say")
+        if path.exists():
+            return path
+        if create:
             path.parent.mkdir(parents=True, exist_ok=True)
-        except OSError as fault:
-            raise _bad(place, str(fault), "a folder that can be written", "name another") from fault
-    return f"sqlite:///{path}"
+            return path
+    except (OSError, ValueError) as fault:
+        raise refused(
+            place, str(fault), "a file in a folder that can be written", "name another"
+        ) from fault
+    raise refused(
+        place,
+        "no such file",
+        "a logbook",
+        "name it with --logbook, or make one by running something",
+    )
 
 
-def _arguments(url: str) -> dict[str, object]:
-    return {"timeout": 10.0} if url.startswith("sqlite") else {}
+def _engine(url: sa.URL, name: str, wait_s: float) -> sa.Engine:
+    local = url.get_backend_name() == "sqlite"
+    try:
+        engine = sa.create_engine(
+            url, connect_args={"timeout": wait_s} if local else {}, json_serializer=as_json
+        )
+    except NoSuchModuleError as fault:
+        raise refused(
+            name, str(fault), "sqlite, postgresql", "name a database that is known"
+        ) from (fault)
+    except ModuleNotFoundError as fault:
+        package = "psycopg[binary]" if fault.name == "psycopg" else str(fault.name)
+        raise refused(
+            name, f"no driver: {fault.name}", "an installed driver", f"pip install '{package}'"
+        ) from fault
+    if local:
+        event.listen(engine, "connect", _settings)
+        event.listen(engine, "begin", _begin)
+    return engine
 
 
-def _settings(connection, _record) -> None:  # type: ignore[no-untyped-def]
-    """Durable before acknowledged: WAL with a sync at each commit."""
+def _settings(connection: Any, _record: Any) -> None:
+    """Durable before acknowledged: a sync at each commit. Nothing here alters the file."""
+    connection.isolation_level = None  # transactions begin where _begin says so
     cursor = connection.cursor()
-    cursor.execute("PRAGMA journal_mode=WAL")
     cursor.execute("PRAGMA synchronous=FULL")
     cursor.execute("PRAGMA foreign_keys=ON")
-    cursor.execute("PRAGMA busy_timeout=10000")
     cursor.close()
 
 
-def _settle_schema(connection: sa.Connection, place: str) -> None:
-    """Make the tables in an empty database; refuse one that is not ours or is newer."""
-    tables = set(sa.inspect(connection).get_table_names())
+def _begin(connection: sa.Connection) -> None:
+    """Writers take the lock at once: one that reads first and then writes could not wait for it."""
+    writes = connection.get_execution_options().get(_WRITES)
+    connection.exec_driver_sql("BEGIN IMMEDIATE" if writes else "BEGIN")
+
+
+def _settle(engine: sa.Engine, name: str, wait_s: float) -> None:
+    """Know the database for a logbook, or make an empty one into one."""
+    with engine.connect() as connection:
+        tables = set(sa.inspect(connection).get_table_names())
+        if tables:
+            _recognise(connection, tables, name)
+    if engine.dialect.name == "sqlite":
+        _write_ahead(engine, wait_s)
     if not tables:
-        schema.metadata.create_all(connection)
-        connection.execute(schema.meta.insert(), {"key": "schema", "value": str(schema.SCHEMA)})
-        return
-    if "meta" not in tables or "runs" not in tables:
-        raise _bad(
-            place,
+        with engine.execution_options(**{_WRITES: True}).begin() as connection:
+            if sa.inspect(connection).has_table("meta"):
+                return  # somebody else was faster
+            schema.metadata.create_all(connection)
+            connection.execute(schema.meta.insert(), {"key": "schema", "value": str(schema.SCHEMA)})
+
+
+def _recognise(connection: sa.Connection, tables: set[str], name: str) -> None:
+    """Refuse a database that is not ours, or of another schema."""
+    if not {"meta", "runs", "cycles", "chunks"} <= tables:
+        raise refused(
+            name,
             "tables " + ", ".join(sorted(tables))[:80],
             "a logbook's tables",
-            "this database belongs to something else; name another file",
+            "this database belongs to something else; name another one",
         )
     found = connection.execute(
         sa.select(schema.meta.c.value).where(schema.meta.c.key == "schema")
     ).scalar_one_or_none()
     if found != str(schema.SCHEMA):
-        raise _bad(
-            place,
+        newer = str(found).isdigit() and int(str(found)) > schema.SCHEMA
+        raise refused(
+            name,
             f"schema {found}",
             f"schema {schema.SCHEMA}",
-            "use the version of Lodestroke that wrote it, or a newer one",
+            "upgrade Lodestroke: a newer version wrote it"
+            if newer
+            else "use the version of Lodestroke that wrote it",
         )
 
 
-def worded(place: str, fault: SQLAlchemyError) -> LogbookError:
-    """A database error as one of ours."""
-    text = str(fault.orig) if isinstance(fault, DBAPIError) else str(fault)
-    advice = "look at the disk and the file's rights"
-    for sign, hint in (
-        ("full", "free some disk space; nothing already logged is lost"),
-        ("locked", "end the program that holds it"),
-        ("not a database", "this file is no logbook; name another"),
-        ("malformed", "run lodestroke log verify, and restore a copy"),
-        ("readonly", "give yourself the right to write, or name another file"),
-        ("unable to open", "name a folder that exists and that you may write to"),
-    ):
-        if sign in text.lower():
-            advice = hint
-    return _bad(
-        place,
-        text.splitlines()[0] if text else type(fault).__name__,
-        "a logbook that can be read and written",
-        advice,
-    )
+def _write_ahead(engine: sa.Engine, wait_s: float) -> None:
+    """WAL, once for the file: readers never wait. Two that set it at once get in each other's way."""
+    end_s = time.monotonic() + wait_s
+    while True:
+        raw = engine.raw_connection()
+        try:
+            cursor = raw.cursor()
+            cursor.execute("PRAGMA journal_mode=WAL")
+            cursor.close()
+            return
+        except Exception as fault:
+            if "locked" not in str(fault) or time.monotonic() > end_s:
+                raise OperationalError("PRAGMA journal_mode=WAL", {}, fault) from fault
+            time.sleep(0.02)
+        finally:
+            raw.close()
 
 
-def _bad(place: str, got: str, bound: str, try_: str) -> LogbookError:
-    return LogbookError("the logbook cannot be used", at=place, got=got, bound=bound, try_=try_)
+def as_json(value: Any) -> str:
+    """JSON that every database takes: numpy's numbers as numbers, what is not finite as null."""
+    return json.dumps(_plain(value), sort_keys=True, allow_nan=False)
+
+
+def _plain(value: Any) -> Any:
+    if isinstance(value, dict):
+        return {str(key): _plain(entry) for key, entry in value.items()}
+    if isinstance(value, list | tuple):
+        return [_plain(entry) for entry in value]
+    if hasattr(value, "tolist"):  # numpy, without importing it
+        return _plain(value.tolist())
+    if isinstance(value, float) and not math.isfinite(value):
+        return None
+    return value

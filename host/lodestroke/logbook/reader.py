@@ -1,4 +1,4 @@
-"""Reading runs: rows as dictionaries, samples as numpy records. Only clear_requests writes."""
+"""Reading runs: rows as dictionaries, samples as numpy records. Nothing here writes."""
 
 from __future__ import annotations
 
@@ -8,22 +8,40 @@ from typing import Any
 
 import numpy as np
 import sqlalchemy as sa
-from sqlalchemy.exc import SQLAlchemyError
 
 from ..errors import LogbookError
 from ..rows import SAMPLE, sample_rows
 from . import chunks, schema
-from .open import Logbook, worded
+from .names import resolve
+from .open import Logbook
+from .runs import clear_requests, stop_requested
+
+__all__ = [
+    "Row",
+    "checkups",
+    "clear_requests",
+    "cycle_pages",
+    "cycles",
+    "gaps",
+    "last_cycle",
+    "marks",
+    "notes",
+    "recorder",
+    "resolve",
+    "run",
+    "runs",
+    "sample_chunks",
+    "samples",
+    "stop_requested",
+    "trips",
+]
 
 Row = dict[str, Any]
 
 
-def _all(logbook: Logbook, query: sa.Select[Any]) -> list[Row]:
-    try:
-        with logbook.engine.connect() as connection:
-            return [dict(row) for row in connection.execute(query).mappings()]
-    except SQLAlchemyError as fault:
-        raise worded(logbook.name, fault) from fault
+def _all(logbook: Logbook, query: Any) -> list[Row]:
+    with logbook.read() as connection:
+        return [dict(row) for row in connection.execute(query).mappings()]
 
 
 def runs(logbook: Logbook) -> list[Row]:
@@ -32,28 +50,10 @@ def runs(logbook: Logbook) -> list[Row]:
     return _all(logbook, sa.select(*wanted).order_by(schema.runs.c.serial.desc()))
 
 
-def resolve(logbook: Logbook, name: str) -> str:
-    """A run's id from its id or from "last". Raises LogbookError with what there is."""
-    listing = [row["id"] for row in runs(logbook)]
-    if name == "last" and listing:
-        return str(listing[0])
-    if name in listing:
-        return name
-    raise LogbookError(
-        "no such run",
-        at=logbook.name,
-        got=name,
-        bound="last, " + ", ".join(listing[:6]) if listing else "a run; the logbook is empty",
-        try_="lodestroke log list" if listing else "run something first: lodestroke demo",
-    )
-
-
 def run(logbook: Logbook, run_id: str) -> Row:
-    """One run, whole. Accepts "last"."""
-    found = _all(
-        logbook, sa.select(schema.runs).where(schema.runs.c.id == resolve(logbook, run_id))
-    )
-    return found[0]
+    """One run, whole, by id or "last". Raises LogbookError."""
+    query = sa.select(schema.runs).where(schema.runs.c.id == resolve(logbook, run_id))
+    return _all(logbook, query)[0]
 
 
 def _of(logbook: Logbook, table: sa.Table, run_id: str, *order: str) -> list[Row]:
@@ -65,26 +65,26 @@ def _of(logbook: Logbook, table: sa.Table, run_id: str, *order: str) -> list[Row
     )
 
 
-def cycles(logbook: Logbook, run_id: str, after: int = 0) -> list[Row]:
-    """Cycles in order of their number, from after + 1 on."""
+def cycles(logbook: Logbook, run_id: str, after: int = 0, most: int | None = None) -> list[Row]:
+    """Cycles in order of their number, from after + 1 on, at most so many."""
     table = schema.cycles
-    return _all(
-        logbook,
-        sa.select(table)
-        .where(table.c.run == run_id, table.c.cycle > after)
-        .order_by(table.c.cycle),
-    )
+    query = sa.select(table).where(table.c.run == run_id, table.c.cycle > after)
+    return _all(logbook, query.order_by(table.c.cycle).limit(most))
+
+
+def cycle_pages(logbook: Logbook, run_id: str, most: int = 20_000) -> Iterator[list[Row]]:
+    """The same, page by page, so that a run of a million cycles fits in memory."""
+    after = 0
+    while page := cycles(logbook, run_id, after, most):
+        yield page
+        after = page[-1]["cycle"]
 
 
 def last_cycle(logbook: Logbook, run_id: str) -> int:
     """The highest cycle number on disk, 0 for none."""
-    rows = _all(
-        logbook,
-        sa.select(sa.func.max(schema.cycles.c.cycle).label("last")).where(
-            schema.cycles.c.run == run_id
-        ),
-    )
-    return int(rows[0]["last"] or 0)
+    table = schema.cycles.c
+    query = sa.select(sa.func.max(table.cycle).label("last")).where(table.run == run_id)
+    return int(_all(logbook, query)[0]["last"] or 0)
 
 
 def trips(logbook: Logbook, run_id: str) -> list[Row]:
@@ -108,7 +108,7 @@ def gaps(logbook: Logbook, run_id: str) -> list[Row]:
 
 
 def notes(logbook: Logbook, run_id: str) -> list[Row]:
-    """Notes in order."""
+    """Notes in order; kind "problem" marks what verify tells too."""
     return _of(logbook, schema.notes, run_id)
 
 
@@ -119,24 +119,33 @@ def recorder(trip: Row) -> np.ndarray:
     """
     if not trip["recorder"]:
         return np.empty(0, SAMPLE)
-    rows = zlib.decompress(trip["recorder"])
+    try:
+        rows = zlib.decompress(trip["recorder"])
+    except zlib.error as fault:
+        raise ValueError(f"cannot be decompressed: {fault}") from fault
     if zlib.crc32(rows) != trip["recorder_crc32"]:
         raise ValueError("checksum differs")
     return sample_rows(rows)
 
 
+def stored_chunks(logbook: Logbook, run_id: str) -> Iterator[Row]:
+    """Chunk rows in order, one in memory at a time, their data as stored."""
+    table = schema.chunks
+    number = 0
+    while True:
+        query = sa.select(table).where(table.c.run == run_id, table.c.number > number)
+        found = _all(logbook, query.order_by(table.c.number).limit(1))
+        if not found:
+            return
+        number = found[0]["number"]
+        yield found[0]
+
+
 def sample_chunks(logbook: Logbook, run_id: str) -> Iterator[tuple[Row, np.ndarray]]:
     """Chunk by chunk: the chunk's row and its samples. Raises LogbookError for a damaged one."""
-    numbers = _all(
-        logbook,
-        sa.select(schema.chunks.c.id)
-        .where(schema.chunks.c.run == run_id)
-        .order_by(schema.chunks.c.number),
-    )
-    for number in numbers:
-        row = _all(logbook, sa.select(schema.chunks).where(schema.chunks.c.id == number["id"]))[0]
+    for row in stored_chunks(logbook, run_id):
         try:
-            rows = chunks.unpack(row["data"], row["sha256"])
+            rows = chunks.unpack(row["data"], row["sha256"], row["codec"])
         except ValueError as fault:
             raise LogbookError(
                 "a chunk of samples is damaged",
@@ -152,22 +161,3 @@ def samples(logbook: Logbook, run_id: str) -> np.ndarray:
     """All samples of a run, dtype SAMPLE, in the order they were taken."""
     parts = [rows for _, rows in sample_chunks(logbook, run_id)]
     return np.concatenate(parts) if parts else np.empty(0, SAMPLE)
-
-
-def stop_requested(logbook: Logbook, run_id: str) -> bool:
-    """Whether somebody asked for this run to stop since its last resume."""
-    query = (
-        sa.select(schema.requests.c.id)
-        .where(schema.requests.c.run == run_id, schema.requests.c.what == "stop")
-        .limit(1)
-    )
-    return bool(_all(logbook, query))
-
-
-def clear_requests(logbook: Logbook, run_id: str) -> None:
-    """A run begins or resumes: what was asked before no longer counts."""
-    try:
-        with logbook.engine.begin() as connection:
-            connection.execute(schema.requests.delete().where(schema.requests.c.run == run_id))
-    except SQLAlchemyError as fault:
-        raise worded(logbook.name, fault) from fault

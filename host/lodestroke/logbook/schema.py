@@ -30,20 +30,29 @@ runs = sa.Table(
     sa.Column("sources", sa.JSON, nullable=False),  # rig, schedule, plan as text
     sa.Column("resume", sa.JSON, nullable=False),  # what --resume needs
     sa.Column("summary", sa.JSON),
-    sa.Column("chain", sa.String(64), nullable=False, default=""),
+    sa.Column("chain", sa.String(64), nullable=False),  # of the last chunk; see chunks.py
     sa.Column("chunks", sa.Integer, nullable=False, default=0),
+    sa.Column("counts", sa.JSON, nullable=False),  # rows written, by table
     sa.Column("lease_owner", sa.Text),
     sa.Column("lease_until", sa.Float, nullable=False, default=0.0),
 )
 
 
-def _of_run(*more: sa.Column, unique: tuple[str, ...] = ()) -> list[sa.schema.SchemaItem]:  # type: ignore[type-arg]
+def _of_run(
+    *more: sa.Column,  # type: ignore[type-arg]
+    unique: tuple[str, ...] = (),
+    summed: bool = True,
+) -> list[sa.schema.SchemaItem]:
     """Columns that every table of a run's rows shares."""
     items: list[sa.schema.SchemaItem] = [
         sa.Column("id", sa.Integer, primary_key=True),
         sa.Column("run", sa.String(16), sa.ForeignKey("runs.id"), nullable=False, index=True),
         *more,
     ]
+    if summed:
+        items.append(
+            sa.Column("crc32", sa.BigInteger, nullable=False)
+        )  # of the row; see journal.py
     if unique:
         items.append(sa.UniqueConstraint("run", *unique))
     return items
@@ -54,6 +63,7 @@ cycles = sa.Table(
     metadata,
     *_of_run(
         sa.Column("cycle", sa.Integer, nullable=False),
+        sa.Column("segment", sa.Integer, nullable=False),  # which GO of the run: ticks start anew
         sa.Column("nonce", sa.BigInteger, nullable=False),
         sa.Column("entry", sa.BigInteger, nullable=False),
         sa.Column("tick", sa.BigInteger, nullable=False),
@@ -77,6 +87,7 @@ trips = sa.Table(
     "trips",
     metadata,
     *_of_run(
+        sa.Column("segment", sa.Integer, nullable=False),
         sa.Column("nonce", sa.BigInteger, nullable=False),
         sa.Column("entry", sa.BigInteger, nullable=False),
         sa.Column("trip_serial", sa.Integer, nullable=False),
@@ -99,6 +110,7 @@ marks = sa.Table(
     "marks",
     metadata,
     *_of_run(
+        sa.Column("segment", sa.Integer, nullable=False),
         sa.Column("nonce", sa.BigInteger, nullable=False),
         sa.Column("entry", sa.BigInteger, nullable=False),
         sa.Column("tick", sa.BigInteger, nullable=False),
@@ -138,6 +150,7 @@ notes = sa.Table(
     metadata,
     *_of_run(
         sa.Column("at", sa.String(32), nullable=False),
+        sa.Column("kind", sa.String(16), nullable=False),  # note, or problem: verify tells it
         sa.Column("text", sa.Text, nullable=False),
     ),
 )
@@ -151,10 +164,13 @@ chunks = sa.Table(
         sa.Column("first_tick", sa.BigInteger, nullable=False),
         sa.Column("last_tick", sa.BigInteger, nullable=False),
         sa.Column("rows", sa.Integer, nullable=False),
+        sa.Column("row_bytes", sa.Integer, nullable=False),
+        sa.Column("codec", sa.String(16), nullable=False),
         sa.Column("data", sa.LargeBinary, nullable=False),
         sa.Column("sha256", sa.String(64), nullable=False),  # of the rows before compression
-        sa.Column("chain", sa.String(64), nullable=False),  # of the chain so far and this sum
+        sa.Column("chain", sa.String(64), nullable=False),  # of the chain so far and this chunk
         unique=("number",),
+        summed=False,
     ),
 )
 
@@ -164,5 +180,9 @@ requests = sa.Table(
     *_of_run(
         sa.Column("what", sa.String(16), nullable=False),
         sa.Column("at", sa.String(32), nullable=False),
+        summed=False,
     ),
 )
+
+# what a run's account counts and verify counts again
+COUNTED = {table.name: table for table in (cycles, trips, marks, checkups, gaps, notes)}

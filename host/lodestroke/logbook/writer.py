@@ -1,108 +1,39 @@
-"""Writing runs. Only the runner writes; a flush is one transaction, on disk before it returns."""
+"""Writing a run. Only the runner writes; a flush is one transaction, on disk before it returns."""
 
 from __future__ import annotations
 
-import os
-import platform
-import socket
-import time
+import contextlib
 import zlib
-from datetime import datetime, timezone
 from typing import Any
 
 import sqlalchemy as sa
-from sqlalchemy.exc import IntegrityError, SQLAlchemyError
 
 from lodeboard import trips as trip_table
 
 from ..errors import LogbookError
-from . import chunks, schema
-from .open import Logbook, worded
-
-_CHUNK_ROWS = 8192
-LEASE_S = 15.0
-
-
-def now_iso() -> str:
-    """UTC, to the millisecond."""
-    return datetime.now(timezone.utc).isoformat(timespec="milliseconds")
-
-
-def new_run(
-    logbook: Logbook,
-    kind: str,
-    *,
-    title: str = "",
-    place: str = "",
-    meta: dict[str, Any] | None = None,
-    sources: dict[str, str] | None = None,
-) -> str:
-    """Open a run and return its id, "r0001" and so on; safe with several writers."""
-    for _ in range(50):
-        try:
-            with logbook.engine.begin() as connection:
-                last = connection.execute(sa.select(sa.func.max(schema.runs.c.serial))).scalar()
-                serial = (last or 0) + 1
-                run = f"r{serial:04d}"
-                connection.execute(
-                    schema.runs.insert(),
-                    {
-                        "id": run,
-                        "serial": serial,
-                        "kind": kind,
-                        "title": title,
-                        "place": place,
-                        "started": now_iso(),
-                        "meta": meta or {},
-                        "sources": sources or {},
-                        "resume": {},
-                        "resumes": 0,
-                        "chain": "",
-                        "chunks": 0,
-                        "lease_until": 0.0,
-                    },
-                )
-            return run
-        except IntegrityError:
-            continue  # another writer took the number: take the next
-        except SQLAlchemyError as fault:
-            raise worded(logbook.name, fault) from fault
-    raise LogbookError(
-        "no run number could be had",
-        at=logbook.name,
-        got="50 tries",
-        bound="a free number",
-        try_="look who else writes this logbook",
-    )
-
-
-def request_stop(logbook: Logbook, run: str) -> None:
-    """Ask whoever executes this run to stop it."""
-    try:
-        with logbook.engine.begin() as connection:
-            connection.execute(
-                schema.requests.insert(), {"run": run, "what": "stop", "at": now_iso()}
-            )
-    except SQLAlchemyError as fault:
-        raise worded(logbook.name, fault) from fault
+from . import chunks, journal, lease, schema
+from .open import Logbook
+from .runs import now_iso
 
 
 class Writer:
-    """The one writer of a run, held by a lease. Use as a context manager."""
+    """The one writer of a run, held by a lease. Use as a context manager.
+
+    Rows are buffered until flush(). One that fails (a full disk) keeps them for the next.
+    """
 
     def __init__(self, logbook: Logbook, run: str) -> None:
         self.logbook = logbook
         self.run = run
-        self.owner = f"{socket.gethostname()}:{os.getpid()}"
         self.rows: list[tuple[sa.Table, dict[str, Any]]] = []
-        self.resume: dict[str, Any] | None = None
-        self.sample_rows = bytearray()
+        self.buffer = chunks.Buffer()
+        self.recorders: dict[tuple[int, int], bytes] = {}
+        self.values: dict[str, Any] = {}  # columns of the run's own row
         self.segment = 0
         self.nonce = 0
         self.entry = 0  # highest journal entry buffered
         self.flushed_entry = 0
-        self.trip_bodies: dict[tuple[int, int], bytes] = {}
-        self._lease()
+        self.owner = lease.take(logbook, run)
 
     def __enter__(self) -> Writer:
         return self
@@ -124,10 +55,12 @@ class Writer:
         """A mark of the schedule."""
         self._journal(schema.marks, fields)
 
-    def trip(self, fields: dict[str, int]) -> None:
-        """A trip record; attach its recorder later with recorder()."""
+    def trip(self, fields: dict[str, int], recorder: bytes | None = None) -> None:
+        """A trip record; its recorder's rows with it, or later with recorder()."""
         name = trip_table.TABLE.get(fields["code"], (f"code_{fields['code']}", 0))[0]
-        self._journal(schema.trips, {**fields, "name": name, "at": now_iso()})
+        self._journal(schema.trips, {**fields, "name": name}, at=now_iso())
+        if recorder is not None:
+            self.recorder(fields["entry"], recorder)
 
     def seen(self, entry: int) -> None:
         """A journal entry that leaves no row of its own (the end of a program)."""
@@ -135,16 +68,12 @@ class Writer:
 
     def recorder(self, entry: int, rows: bytes) -> None:
         """The flight recorder's rows for the trip with this entry."""
-        self.trip_bodies[(self.nonce, entry)] = rows
+        self.recorders[(self.nonce, entry)] = rows
 
     def checkup(self, after_cycle: int, item: str, result: dict[str, Any]) -> None:
-        """What a check-up measured."""
-        self.rows.append(
-            (
-                schema.checkups,
-                {"after_cycle": after_cycle, "item": item, "at": now_iso(), "result": result},
-            )
-        )
+        """What a check-up measured; quantities carry their unit in their name."""
+        row = {"after_cycle": after_cycle, "item": item, "at": now_iso(), "result": result}
+        self._row(schema.checkups, row)
 
     def gap(
         self,
@@ -155,230 +84,148 @@ class Writer:
         unnumbered_most: int = 0,
     ) -> None:
         """Cycles that were or may have been pumped and are not on record."""
-        self.rows.append(
-            (
-                schema.gaps,
-                {
-                    "after_cycle": after_cycle,
-                    "first_cycle": first,
-                    "last_cycle": last,
-                    "unnumbered_most": unnumbered_most,
-                    "why": why,
-                    "at": now_iso(),
-                },
-            )
+        self._row(
+            schema.gaps,
+            {
+                "after_cycle": after_cycle,
+                "first_cycle": first,
+                "last_cycle": last,
+                "unnumbered_most": unnumbered_most,
+                "why": why,
+                "at": now_iso(),
+            },
         )
 
     def note(self, text: str) -> None:
         """Anything worth telling whoever reads the run later."""
-        self.rows.append((schema.notes, {"at": now_iso(), "text": text}))
+        self._row(schema.notes, _note("note", text))
 
     def samples(self, rows: bytes) -> None:
-        """Packed sample rows, in tick order."""
-        self.sample_rows += rows
+        """Packed sample rows, in tick order. Raises ValueError for a part of a row."""
+        self.buffer.add(self.segment, rows)
+
+    def resume_state(self, state: dict[str, Any]) -> None:
+        """What a later --resume needs; on disk with the next flush."""
+        self.values["resume"] = state
 
     def flush(self, *, whole: bool = True) -> int:
         """Commit everything; the highest journal entry that is on disk. Raises LogbookError.
 
-        whole=False keeps a part-filled chunk of samples back, so that chunks stay large.
+        whole=False keeps a part-filled chunk of samples back for some seconds, so that chunks stay
+        large; journal rows are always written.
         """
-        try:
-            with self.logbook.engine.begin() as connection:
-                for table, fields in self.rows:
-                    self._insert(connection, table, {"run": self.run, **fields})
-                self._attach(connection)
-                self._write_chunks(connection, whole)
-                until = time.time() + LEASE_S
-                values: dict[str, Any] = {"lease_until": until, "lease_owner": self.owner}
-                if self.resume is not None:
-                    values["resume"] = self.resume
+        pieces = self.buffer.due(whole)
+        with self.logbook.write() as connection:
+            account = lease.renew(connection, self.logbook, self.run, self.owner)
+            values = {**self.values, **self._write_rows(connection, account)}
+            self._attach(connection)
+            if pieces:
+                values |= self._write_chunks(connection, account, pieces)
+            if values:
                 connection.execute(
                     schema.runs.update().where(schema.runs.c.id == self.run).values(**values)
                 )
-        except SQLAlchemyError as fault:
-            raise worded(self.logbook.name, fault) from fault
         self.rows.clear()
-        self.trip_bodies.clear()
-        if whole or len(self.sample_rows) >= _CHUNK_ROWS * 28:
-            self.sample_rows = self.sample_rows[self._whole_bytes(whole) :]
+        self.recorders.clear()
+        self.values.clear()
+        self.buffer.drop(pieces)
         self.flushed_entry = max(self.flushed_entry, self.entry)
         return self.flushed_entry
 
-    def resume_state(self, state: dict[str, Any]) -> None:
-        """What a later --resume needs; on disk with the next flush."""
-        self.resume = state
-
     def resumed(self) -> None:
-        """Count one more resume."""
-        with self.logbook.engine.begin() as connection:
-            connection.execute(
-                schema.runs.update()
-                .where(schema.runs.c.id == self.run)
-                .values(resumes=schema.runs.c.resumes + 1, ended=None, end=None)
-            )
+        """Count one more resume; the run is open again. On disk when it returns."""
+        self.values |= {"resumes": schema.runs.c.resumes + 1, "ended": None, "end": None}
+        self.flush()
 
     def finish(self, end: str, summary: dict[str, Any]) -> None:
-        """Close the run: why it ended, and its figures."""
+        """Close the run with everything buffered: why it ended, and its figures."""
+        self.values |= {"ended": now_iso(), "end": end, "summary": summary}
         self.flush()
-        try:
-            with self.logbook.engine.begin() as connection:
-                connection.execute(
-                    schema.runs.update()
-                    .where(schema.runs.c.id == self.run)
-                    .values(ended=now_iso(), end=end, summary=summary)
-                )
-        except SQLAlchemyError as fault:
-            raise worded(self.logbook.name, fault) from fault
 
     def release(self) -> None:
-        """Give the lease back."""
-        try:
-            with self.logbook.engine.begin() as connection:
-                connection.execute(
-                    schema.runs.update()
-                    .where(schema.runs.c.id == self.run, schema.runs.c.lease_owner == self.owner)
-                    .values(lease_owner=None, lease_until=0.0)
-                )
-        except SQLAlchemyError:
-            pass  # it lapses by itself
+        """Give the lease back. Never raises: it lapses by itself."""
+        with contextlib.suppress(LogbookError), self.logbook.write() as connection:
+            lease.give_back(connection, self.run, self.owner)
 
-    def _journal(self, table: sa.Table, fields: dict[str, Any]) -> None:
+    def _row(self, table: sa.Table, fields: dict[str, Any]) -> None:
+        self.rows.append((table, {"run": self.run, **fields}))
+
+    def _journal(self, table: sa.Table, fields: dict[str, Any], **more: Any) -> None:
+        missing = [name for name in journal.columns(table) if name not in fields]
+        if missing:
+            raise ValueError(f"a row of {table.name} lacks {', '.join(missing)}")
+        wanted = {name: fields[name] for name in journal.columns(table)}
+        self._row(table, {**wanted, **more, "nonce": self.nonce, "segment": self.segment})
         self.entry = max(self.entry, fields["entry"])
-        self.rows.append((table, {**fields, "nonce": self.nonce}))
 
-    def _insert(self, connection: sa.Connection, table: sa.Table, fields: dict[str, Any]) -> None:
-        """Insert once; a row that is there already must be the same."""
-        keys = _KEYS.get(table.name)
-        if keys:
-            found = (
-                connection.execute(
-                    sa.select(table).where(
-                        table.c.run == self.run, *(table.c[key] == fields[key] for key in keys)
-                    )
-                )
-                .mappings()
-                .first()
-            )
-            if found is not None:
-                differing = [
-                    name
-                    for name, value in fields.items()
-                    if name not in ("at", "nonce", "entry") and found[name] != value
-                ]
-                if differing and table.name != "checkups":
-                    text = (
-                        f"{table.name} {[fields[key] for key in keys]} came twice and differs in "
-                        + ", ".join(differing)
-                    )
-                    connection.execute(
-                        schema.notes.insert(), {"run": self.run, "at": now_iso(), "text": text}
-                    )
-                return
-        connection.execute(table.insert(), fields)
+    def _write_rows(self, connection: sa.Connection, account: sa.RowMapping) -> dict[str, Any]:
+        """Buffered rows, table by table, and notes of what came twice and differs."""
+        if not self.rows:
+            return {}
+        counts = dict(account["counts"])
+        grouped: dict[str, list[dict[str, Any]]] = {}
+        for table, row in self.rows:
+            grouped.setdefault(table.name, []).append(row)
+        notes = grouped.pop("notes", [])
+        for name, rows in grouped.items():
+            new, problems = journal.put(connection, schema.COUNTED[name], rows)
+            counts[name] = counts.get(name, 0) + new
+            notes += self._told_once(connection, problems)
+        if notes:
+            new, _ = journal.put(connection, schema.notes, notes)
+            counts["notes"] = counts.get("notes", 0) + new
+        return {"counts": counts}
+
+    def _told_once(self, connection: sa.Connection, problems: list[str]) -> list[dict[str, Any]]:
+        """Notes of problems that are not on record yet: a board may resend one many times."""
+        if not problems:
+            return []
+        notes = schema.notes.c
+        told = set(
+            connection.execute(
+                sa.select(notes.text).where(notes.run == self.run, notes.kind == "problem")
+            ).scalars()
+        )
+        return [
+            {"run": self.run, **_note("problem", text)} for text in problems if text not in told
+        ]
 
     def _attach(self, connection: sa.Connection) -> None:
-        for (nonce, entry), rows in self.trip_bodies.items():
-            data, _ = chunks.pack(rows)
+        trips = schema.trips
+        for (nonce, entry), rows in self.recorders.items():
             connection.execute(
-                schema.trips.update()
-                .where(
-                    schema.trips.c.run == self.run,
-                    schema.trips.c.nonce == nonce,
-                    schema.trips.c.entry == entry,
-                )
-                .values(recorder=data, recorder_crc32=zlib.crc32(rows))
+                trips.update()
+                .where(trips.c.run == self.run, trips.c.nonce == nonce, trips.c.entry == entry)
+                .values(recorder=chunks.pack(rows)[0], recorder_crc32=zlib.crc32(rows))
             )
 
-    def _whole_bytes(self, whole: bool) -> int:
-        size = len(self.sample_rows)
-        return size if whole else size // (_CHUNK_ROWS * 28) * (_CHUNK_ROWS * 28)
-
-    def _write_chunks(self, connection: sa.Connection, whole: bool) -> None:
-        end = self._whole_bytes(whole)
-        if not end:
-            return
-        row = connection.execute(
-            sa.select(schema.runs.c.chain, schema.runs.c.chunks).where(schema.runs.c.id == self.run)
-        ).one()
-        chain, number = row.chain, row.chunks
-        for at in range(0, end, _CHUNK_ROWS * 28):
-            rows = bytes(self.sample_rows[at : min(at + _CHUNK_ROWS * 28, end)])
+    def _write_chunks(
+        self, connection: sa.Connection, account: sa.RowMapping, pieces: list[tuple[int, bytes]]
+    ) -> dict[str, Any]:
+        chain, number = account["chain"], account["chunks"]
+        for segment, rows in pieces:
             data, sha256 = chunks.pack(rows)
-            chain = chunks.link(chain, sha256)
+            first, last = chunks.ticks(rows)
             number += 1
+            chain = chunks.link(chain, sha256, number, segment, first, last)
             connection.execute(
                 schema.chunks.insert(),
                 {
                     "run": self.run,
                     "number": number,
-                    "segment": self.segment,
-                    "first_tick": int.from_bytes(rows[:4], "little"),
-                    "last_tick": int.from_bytes(rows[-28:-24], "little"),
-                    "rows": len(rows) // 28,
+                    "segment": segment,
+                    "first_tick": first,
+                    "last_tick": last,
+                    "rows": len(rows) // chunks.ROW_BYTES,
+                    "row_bytes": chunks.ROW_BYTES,
+                    "codec": chunks.CODEC,
                     "data": data,
                     "sha256": sha256,
                     "chain": chain,
                 },
             )
-        connection.execute(
-            schema.runs.update()
-            .where(schema.runs.c.id == self.run)
-            .values(chain=chain, chunks=number)
-        )
-
-    def _lease(self) -> None:
-        """Take the run for ourselves, or say who has it."""
-        try:
-            with self.logbook.engine.begin() as connection:
-                taken = connection.execute(
-                    schema.runs.update()
-                    .where(
-                        schema.runs.c.id == self.run,
-                        sa.or_(
-                            schema.runs.c.lease_until < time.time(),
-                            schema.runs.c.lease_owner.is_(None),
-                            schema.runs.c.lease_owner.in_(_gone_owners(connection, self.run)),
-                        ),
-                    )
-                    .values(lease_owner=self.owner, lease_until=time.time() + LEASE_S)
-                ).rowcount
-                owner = connection.execute(
-                    sa.select(schema.runs.c.lease_owner).where(schema.runs.c.id == self.run)
-                ).scalar_one_or_none()
-        except SQLAlchemyError as fault:
-            raise worded(self.logbook.name, fault) from fault
-        if not taken:
-            raise LogbookError(
-                "another process is writing this run",
-                at=f"{self.logbook.name}, run {self.run}",
-                got=f"held by {owner}" if owner else "no such run",
-                bound="one writer a run",
-                try_="end that process first, or wait until its lease has lapsed",
-            )
+        return {"chain": chain, "chunks": number}
 
 
-def _gone_owners(connection: sa.Connection, run: str) -> list[str]:
-    """The run's owner, if it was a process of this machine that is no longer there."""
-    owner = connection.execute(
-        sa.select(schema.runs.c.lease_owner).where(schema.runs.c.id == run)
-    ).scalar_one_or_none()
-    if not owner or ":" not in owner:
-        return []
-    host, _, pid = owner.rpartition(":")
-    if host != socket.gethostname() or platform.system() == "Windows":
-        return []
-    try:
-        os.kill(int(pid), 0)
-    except ProcessLookupError:
-        return [owner]
-    except (OSError, ValueError):
-        pass
-    return []
-
-
-_KEYS = {
-    "cycles": ("cycle",),
-    "trips": ("nonce", "entry"),
-    "marks": ("nonce", "entry"),
-    "checkups": ("after_cycle", "item"),
-}
+def _note(kind: str, text: str) -> dict[str, Any]:
+    return {"at": now_iso(), "kind": kind, "text": text}
