@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import binascii
+import contextlib
 import json
 import tempfile
 import time
@@ -13,7 +14,7 @@ from typing import Any
 from lodeboard import states
 from lodeboard.wire.frames import UpReader, build_down
 
-from ..errors import FlashError, LinkTimeout, PortError
+from ..errors import FlashError, LinkTimeout, LodestrokeError, PortError
 from ..link import BoardInfo, Client, Port, open_port
 from ..link.decode import pack_down, unpack_up
 from .bundle import BOOT_WINDOW_MS, GOOD, SLOTS, Bundle, build_bundle, sha256
@@ -23,7 +24,7 @@ from .snippets import CLEAR, PROBE, SUMS
 _TRIES_OF_A_NEW_SLOT = 2
 _GREET_S = 0.4
 _BACK_S = 12.0          # window, import and start of a slow board
-_COPY_LIMIT_S = 120.0
+_COPY_LIMIT_S = {"virtual": 30.0}      # others: 120 s
 
 
 def install(rig: Any, port_name: str, say: Callable[[str], None]) -> dict[str, Any]:
@@ -40,13 +41,19 @@ def install(rig: Any, port_name: str, say: Callable[[str], None]) -> dict[str, A
     probe = _json(tool.execute("ask the board what it is", PROBE), "ask the board what it is")
     _fits(probe, bundle, port_name)
     slot, back, sequence = _choose(probe["pointers"])
-    say(f"copying {len(bundle.files)} files to {slot}")
-    _copy_slot(tool, bundle, slot)
-    say("checking their SHA-256 sums on the board")
-    _verify(tool, bundle, slot, port_name)
-    say("boot files and slot pointer")
-    _copy_boot(tool, bundle)
-    _point(tool, bundle, slot, back)
+    try:
+        say(f"copying {len(bundle.files)} files to {slot}")
+        _copy_slot(tool, bundle, slot)
+        say("checking their SHA-256 sums on the board")
+        _verify(tool, bundle, slot, port_name)
+        say("boot files and slot pointer")
+        _copy_boot(tool, bundle)
+        _point(tool, bundle, slot, back)
+    except FlashError:
+        say("that failed; restarting what was on the board before")
+        with contextlib.suppress(LodestrokeError):
+            _let_go(tool, bundle, port_name)
+        raise
     say("restarting")
     info = _restart(tool, bundle, port_name)
     say(f"the board answers with bundle {info.bundle_id.hex()}")
@@ -145,13 +152,14 @@ def _choose(lines: list[str]) -> tuple[str, str, int]:
 
 def _copy_slot(tool: Mpremote, bundle: Bundle, slot: str) -> None:
     """The slot emptied first: a stale module would shadow or survive."""
-    tool.execute("empty the slot", CLEAR + f"\nclear('{slot}')", 30.0)
+    tool.execute("empty the slot", CLEAR + f"\nclear('{slot}')", 15.0)
+    limit_s = _COPY_LIMIT_S.get(bundle.kind, 120.0)
     with tempfile.TemporaryDirectory(prefix="lodestroke-") as folder:
         for name, data in bundle.files.items():
             path = Path(folder) / slot / name
             path.parent.mkdir(parents=True, exist_ok=True)
             path.write_bytes(data)
-        tool.run("copy", ["fs", "cp", "-r", str(Path(folder) / slot), ":"], _COPY_LIMIT_S)
+        tool.run("copy", ["fs", "cp", "-r", str(Path(folder) / slot), ":"], limit_s)
 
 
 def board_sums(tool: Mpremote, top: str) -> dict[str, str]:
@@ -201,14 +209,8 @@ def _point(tool: Mpremote, bundle: Bundle, slot: str, back: str) -> None:
 
 def _restart(tool: Mpremote, bundle: Bundle, port_name: str) -> BoardInfo:
     """Restart into the new package and have it name itself. Raises FlashError."""
-    if bundle.kind == "virtual":
-        port = open_port(port_name)
-        port.write(b"\r\x03\x02\x04")       # friendly REPL, then a soft reset that runs main.py
-        info = _hello(port)
-    else:
-        tool.run("restart the board", ["exec", "--no-follow", "import machine;machine.reset()"], 10)
-        time.sleep(1.0)                     # its port goes, and comes back
-        info = _hello(None, port_name)
+    _let_go(tool, bundle, port_name)
+    info = _hello(port_name)
     if info.bundle_id != bundle.bundle_id:
         raise FlashError(
             "the board runs other firmware than was installed", at=port_name,
@@ -219,10 +221,22 @@ def _restart(tool: Mpremote, bundle: Bundle, port_name: str) -> BoardInfo:
     return info
 
 
-def _hello(port: Port | None, port_name: str = "") -> BoardInfo:
+def _let_go(tool: Mpremote, bundle: Bundle, port_name: str) -> None:
+    """Have the board start whatever its slot pointer names."""
+    if bundle.kind != "virtual":
+        tool.run("restart the board", ["exec", "--no-follow", "import machine;machine.reset()"], 10)
+        time.sleep(1.0)                     # its port goes, and comes back
+        return
+    port = open_port(port_name)
+    port.write(b"\r\x03\x02\x04")           # friendly REPL, then a soft reset that runs main.py
+    time.sleep(0.05)                        # a port closed too soon takes its bytes with it
+    port.close()
+
+
+def _hello(name: str) -> BoardInfo:
     """Wait for the package to come up, whatever its port does meanwhile. Raises FlashError."""
     end = time.monotonic() + _BACK_S
-    name = port.name if port else port_name
+    port: Port | None = None
     while True:
         try:
             port = port or open_port(name)

@@ -14,8 +14,9 @@ import select
 import signal
 import time
 from pathlib import Path
-from typing import Any, Protocol
+from typing import Any
 
+from ..twin.lockstep import Lockstep
 from . import channel, ptys
 from .guard import Guard
 from .interpreter import Interpreter
@@ -25,24 +26,15 @@ _PENDING_MAX = 512          # a board's receive ring: beyond it the host has to 
 _UP_MAX = 4096
 _CLOSED_LOOK_S = 0.01       # how often to look whether somebody has opened the port
 _RAW, _FRIENDLY, _ETX = 0x01, 0x02, 0x03
+_INTERRUPT_S = 1.0          # an exit this soon after an interrupt is the interrupt's doing
 _QUICK_EXITS_MAX = 5        # an interpreter that cannot start must not be started for ever
-
-
-class Bench(Protocol):
-    """What an exchange needs: twin.lockstep.Lockstep."""
-
-    inputs: int
-
-    def exchange(
-        self, duty_a_q15: int, duty_b_q15: int, enable: int, tx: bytes
-    ) -> tuple[Any, bytes]: ...
 
 
 class Relay:
     """One virtual board. `flash` is the folder that it sees as its file system."""
 
     def __init__(
-        self, bench: Bench, flash: Path, work: Path, board_id: str, heap_kib: int
+        self, bench: Lockstep, flash: Path, work: Path, board_id: str, heap_kib: int
     ) -> None:
         self.bench = bench
         self.flash = flash
@@ -60,6 +52,7 @@ class Relay:
         self.ticks = 0
         self._open = False
         self._look_at = 0.0
+        self._interrupted_at = 0.0
         self._wake_at = 0.0
         self._from_host = bytearray()
         self._to_host = bytearray()
@@ -109,11 +102,13 @@ class Relay:
         else:
             self._say(b"MPY: soft reboot\r\n")
             self._cause = "soft"
-            # As on a board: a soft reset out of the raw REPL skips main.py and stays raw. An
-            # interrupt that arrives just as code ends kills the interpreter: no reset was meant.
+            # As on a board: a soft reset out of the raw REPL skips main.py and stays raw. And an
+            # interrupt can kill this interpreter (it raises in the midst of anything): whoever
+            # sent it wants the prompt.
             if self._raw:
                 self._from_host[:0] = bytes([_RAW])
-            self._launch(run_main=not self._raw and code != -signal.SIGINT)
+            interrupted = time.monotonic() - self._interrupted_at < _INTERRUPT_S
+            self._launch(run_main=not self._raw and not (code and interrupted))
 
     def cut(self, cause: str) -> None:
         """Take the power away, or pull the reset line: no farewell, no message."""
@@ -164,6 +159,7 @@ class Relay:
             if part[0] == _ETX and not self._owned and self.board.catches_ctrl_c():
                 ptys.forget(self.inner_slave)      # an interrupt empties the receive ring
                 self.board.signal(signal.SIGINT)
+                self._interrupted_at = time.monotonic()
                 del data[:1]
                 continue
             try:

@@ -21,7 +21,7 @@ from typing import Any
 from ..errors import PortError, RigError, Unavailable
 from ..twin.lockstep import Lockstep
 from .interpreter import available, interpreter_path
-from .relay import Bench, Relay
+from .relay import Relay
 
 HEAP_KIB = 192               # what an RP2040 leaves to Python
 
@@ -47,7 +47,7 @@ class StillPlant:
         """No plant, nothing to advance."""
 
 
-def _bench(config: BoardConfig) -> tuple[Bench, str, int]:
+def _bench(config: BoardConfig) -> tuple[Lockstep, str, int]:
     """(plant in lock-step, board id, heap in KiB) of a rig."""
     if config.still:
         return Lockstep(StillPlant()), "still", HEAP_KIB

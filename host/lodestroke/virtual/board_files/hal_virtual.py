@@ -68,12 +68,13 @@ class VirtualHal(StdioHal):
         return True
 
     def own_port(self, owned):
+        # No interrupt may come while a request is under way: its reply would stay in the pipe.
         if owned:
-            wires.ask(wires.OWN, 0, 0, 0, 0)      # from here on the relay passes 0x03 as data
             StdioHal.own_port(self, True)
+            wires.ask(wires.OWN, 0, 0, 0, 0)      # from here on the relay passes 0x03 as data
         else:
-            StdioHal.own_port(self, False)
             wires.ask(wires.RELEASE, 0, 0, 0, 0)
+            StdioHal.own_port(self, False)
 
     def idle(self, left_us):
         if left_us > 150:
