@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from typing import Any
 
 import click
@@ -30,20 +31,22 @@ def list_(ctx: click.Context, as_json: bool) -> None:
     if as_json:
         emit_json({"logbook": logbook.name, "runs": [_brief(row) for row in rows]})
         return
-    from rich.console import Console
-    from rich.table import Table
-
-    table = Table("run", "kind", "title", "started (UTC)", "place", "end", title=logbook.name)
-    for row in rows:
-        table.add_row(
-            row["id"],
-            row["kind"],
-            row["title"],
-            row["started"][:19],
-            row["place"],
-            row["end"] or "open",
-        )
-    Console().print(table)
+    _print_table(
+        logbook.name,
+        ("run", "kind", "title", "started (UTC)", "place", "cycles", "end"),
+        [
+            (
+                row["id"],
+                row["kind"],
+                row["title"],
+                _second(row["started"]),
+                row["place"],
+                row["counts"].get("cycles", 0),
+                row["end"] or "open",
+            )
+            for row in rows
+        ],
+    )
 
 
 def _brief(row: dict[str, Any]) -> dict[str, Any]:
@@ -72,29 +75,61 @@ def show(ctx: click.Context, run: str, as_json: bool) -> None:
     except LodestrokeError as error:
         fail(error, as_json)
     for trip in parts["trips"]:
-        trip["recorder"] = len(trip["recorder"] or b"")
+        trip["recorder_bytes"] = len(trip.pop("recorder") or b"")  # as stored
     answer = {**_brief(row), "meta": row["meta"], "last_cycle": cycles, **parts}
     if as_json:
         emit_json(answer)
         return
-    for key, value in answer.items():
-        if isinstance(value, list):
-            click.echo(f"{key}: {len(value)}")
-            for item in value:
-                click.echo(
-                    "  "
-                    + ", ".join(
-                        f"{name}={entry}"
-                        for name, entry in item.items()
-                        if name not in ("id", "run", "nonce", "recorder_crc32")
-                    )
-                )
-        elif isinstance(value, dict):
-            click.echo(f"{key}:")
-            for name, entry in value.items():
-                click.echo(f"  {name}: {entry}")
-        else:
-            click.echo(f"{key}: {value}")
+    _show(answer)
+
+
+# columns of show's tables, with their units
+_SHOWN = {
+    "trips": ("trip_serial", "name", "segment", "tick", "value", "limit", "stop_category", "step"),
+    "checkups": ("after_cycle", "item", "result"),
+    "marks": ("mark", "segment", "tick", "step"),
+    "gaps": ("after_cycle", "first_cycle", "last_cycle", "unnumbered_most", "why"),
+    "notes": ("at", "kind", "text"),
+}
+
+
+def _show(answer: dict[str, Any]) -> None:
+    """A run for people: its figures, then a table of each kind of row that it has."""
+    facts = {key: value for key, value in answer.items() if key not in _SHOWN and key != "meta"}
+    for part in ("summary", "meta"):
+        for name, value in (answer[part] or {}).items():
+            if name not in _SHOWN:
+                facts.setdefault(name, value)
+    for name in ("summary", "run"):
+        facts.pop(name, None)
+    rows = [(name, _text(value)) for name, value in facts.items()]
+    _print_table(f"run {answer['id']}", ("what", "value"), rows)
+    for part, names in _SHOWN.items():
+        if answer[part]:
+            cells = [[_text(row[name]) for name in names] for row in answer[part]]
+            _print_table(part, names, cells)
+
+
+def _text(value: Any) -> str:
+    if isinstance(value, dict):
+        return "\n".join(f"{name} {_text(entry)}" for name, entry in value.items())
+    return "" if value is None else str(value)
+
+
+def _second(at: str) -> str:
+    return at[:19].replace("T", " ")
+
+
+def _print_table(title: str, names: Sequence[str], rows: Sequence[Sequence[Any]]) -> None:
+    """A table on standard output; titles and notes are shown as they are, brackets and all."""
+    from rich.console import Console
+    from rich.table import Table
+    from rich.text import Text
+
+    table = Table(*names, title=Text(title))
+    for row in rows:
+        table.add_row(*(Text(str(cell)) for cell in row))
+    Console().print(table)
 
 
 @command.command()

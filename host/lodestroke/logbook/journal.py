@@ -37,7 +37,7 @@ def columns(table: sa.Table) -> list[str]:
 def row_sum(table: sa.Table, row: Mapping[str, Any]) -> int:
     """CRC-32 (IEEE 802.3) of a row's values in column order, with the run and the table's name."""
     values = [row[column.name] for column in table.c if column.name not in _NOT_SUMMED]
-    return zlib.crc32(as_json([table.name, *values]).encode())
+    return zlib.crc32(as_json([table.name, *values], sort_keys=True).encode())
 
 
 def put(

@@ -229,9 +229,9 @@ def _write_ahead(engine: sa.Engine, wait_s: float) -> None:
             raw.close()
 
 
-def as_json(value: Any) -> str:
+def as_json(value: Any, *, sort_keys: bool = False) -> str:
     """JSON that every database takes: numpy's numbers as numbers, what is not finite as null."""
-    return json.dumps(_plain(value), sort_keys=True, allow_nan=False)
+    return json.dumps(_plain(value), sort_keys=sort_keys, allow_nan=False)
 
 
 def _plain(value: Any) -> Any:
