@@ -205,8 +205,14 @@ class Client:
         elif isinstance(message, BoardInfo):
             before = self.info
             self.hello_seen = message
+            self._forget(everything=before is None)
             if before is not None and before.boot_nonce != message.boot_nonce:
                 self.events.append(Restarted(message))
+
+    def _forget(self, everything: bool) -> None:
+        """What came before a hello is about another time: beats, or all that another host left."""
+        stale = (Sample, Beat, Entry, Recorded) if everything else (Beat, Recorded)
+        self.events = deque(event for event in self.events if not isinstance(event, stale))
 
     def _beat(self) -> None:
         code, body = pack_down("beat", {"frame": self.up_frame, "saved_entry": self.saved_entry})
