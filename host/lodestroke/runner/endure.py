@@ -179,6 +179,8 @@ def _resume(bench: Bench, state: dict[str, Any], clear: str | None) -> str:
             client, beat, session.HOST_SILENT if name == session.HOST_SILENT else clear
         )
         writer.note(f"trip {name} cleared on resume")
+    else:
+        session.clear_trip(client, beat, None)
     bench.say(f"resuming {writer.run} after cycle {bench.done}")
     return ""
 

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import contextlib
 import secrets
+from collections import deque
 from typing import TYPE_CHECKING
 
 from lodeboard import trips as trip_table
@@ -44,6 +45,7 @@ def check_board(info: BoardInfo, bundle_id: bytes, port: str) -> None:
 
 def look(client: Client) -> Beat:
     """The board's state now, asked for."""
+    client.events = deque(event for event in client.events if not isinstance(event, Beat))
     client.command("status")
     kept = []
     end_s = client.port.now_s() + 2.0
@@ -68,8 +70,11 @@ def look(client: Client) -> Beat:
 def clear_trip(client: Client, beat: Beat, name: str | None) -> str | None:
     """Clear the latched trip if it is the one that is named; its name, or None when there is none.
 
-    Raises Tripped, naming what is latched and how to clear it.
+    A board that a host left armed is disarmed. Raises Tripped, naming what is latched and how to
+    clear it.
     """
+    if beat.state == "armed":
+        client.command("disarm")
     if beat.state != "tripped":
         return None
     code = beat.fields["trip_code"]
