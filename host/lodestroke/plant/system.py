@@ -15,6 +15,7 @@ from .coil import interpolate, resistance
 from .slug import air_spring, magnetic_pressure
 from .valves import acceleration, flow, next_mode
 
+_DIODE_A = 5e-3          # below this a free-wheeling diode no longer conducts
 _SMOOTH_M3_S = 1e-8  # flow over which contact-line hysteresis changes sign
 
 
@@ -112,6 +113,8 @@ def _clamp(y: np.ndarray, p: np.ndarray, drive: np.ndarray, before: np.ndarray) 
             if i < 0.0:
                 y[k.I_A + c] = 0.0
         elif drive[2] == 0.0 and i * before[k.I_A + c] < 0.0:
+            y[k.I_A + c] = 0.0
+        if drive[2] == 0.0 and abs(y[k.I_A + c]) < _DIODE_A:
             y[k.I_A + c] = 0.0
 
 
