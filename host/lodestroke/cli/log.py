@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import sys
 from collections.abc import Sequence
 from typing import Any
 
@@ -126,10 +127,12 @@ def _print_table(title: str, names: Sequence[str], rows: Sequence[Sequence[Any]]
     from rich.table import Table
     from rich.text import Text
 
-    table = Table(*names, title=Text(title))
+    table = Table(title=Text(title))
+    for name in names:
+        table.add_column(name, overflow="fold")
     for row in rows:
         table.add_row(*(Text(str(cell)) for cell in row))
-    Console().print(table)
+    Console(width=None if sys.stdout.isatty() else 160).print(table)
 
 
 @command.command()
