@@ -45,29 +45,30 @@ def pressure(v: dict[str, float], traction: bool = False) -> float:
 
 
 COMPUTE = {
-    "coil.H": lambda v: field(v),
+    "coil.H": field,
     "coil.B": lambda v: field(v) * MU0 * 1e3,
     "liquid.langevin": lambda v: slug.langevin(float(v["x"])),
     "liquid.ln_sinh_over_x": lambda v: slug.log_sinhc(float(v["x"])),
     "liquid.p_m": lambda v: slug.magnetic_pressure(float(v["H_A_per_m"]), v["Ms_A_per_m"], chi(v)),
     "slug.pressure.with_normal": lambda v: pressure(v, traction=True),
-    "slug.pressure": lambda v: pressure(v),
+    "slug.pressure": pressure,
     "seal.normal_traction": lambda v: 0.5 * MU0 * v["M_A_per_m"] ** 2,
     "chan.circular.R": lambda v: slug.drag_circle(v["viscosity_Pa_s"], v["length_m"], v["diameter_m"] / 2),
     "chan.rect.R": lambda v: slug.drag_rectangle(
         v["viscosity_Pa_s"], v["length_m"], v["width_m"], v["height_m"]),
     "wire.R_at": lambda v: coil.resistance(v["R20_ohm"], v["alpha20_per_K"], float(v["temperature_degC"])),
-    "comp.gas.finite": lambda v: _gas_taken_ul(v),
+    "comp.gas.finite": lambda v: gas_taken_ul(v),  # noqa: PLW0108 - defined below
 }
 
 
-def _gas_taken_ul(v: dict[str, float]) -> float:
+def gas_taken_ul(v: dict[str, float]) -> float:
     """Volume that raises a gas's pressure by rise_Pa: our spring, turned round by bisection."""
     volume = v["gas_volume_uL"] * 1e-9
     low, high = -volume * 0.94, 0.0
     for _ in range(200):
         middle = 0.5 * (low + high)
-        if slug.air_spring(middle, 1.0, volume, v["start_absolute_Pa"], float(v["exponent"])) > v["rise_Pa"]:
+        rise = slug.air_spring(middle, 1.0, volume, v["start_absolute_Pa"], float(v["exponent"]))
+        if rise > v["rise_Pa"]:
             low = middle
         else:
             high = middle

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import contextlib
 import os
 from dataclasses import dataclass, field
 from datetime import datetime, timezone
@@ -81,7 +82,8 @@ def write(
         part.write_text(text, encoding="utf-8")
         os.replace(part, out)
     except OSError as fault:
-        part.unlink(missing_ok=True)
+        with contextlib.suppress(OSError):
+            part.unlink(missing_ok=True)
         raise PageError(
             "the page cannot be written",
             at=str(out),
