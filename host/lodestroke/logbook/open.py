@@ -110,6 +110,8 @@ def _url(place: str, create: bool) -> sa.URL:
         if url.database in (None, "", ":memory:"):
             raise refused(place, "a logbook in memory", "a logbook on a disk", "name a file")
         return url.set(database=str(_file(place, Path(url.database or ""), create)))
+    if url.drivername == "postgresql":
+        return url.set(drivername="postgresql+psycopg")  # one driver, whatever the default is
     return url
 
 
