@@ -5,8 +5,8 @@ from __future__ import annotations
 from typing import TYPE_CHECKING
 
 import pytest
-from lodeboard import trips as codes
 
+from lodeboard import trips as codes
 from lodestroke.errors import Refused
 from lodestroke.rig import limits_blob
 from lodestroke.runner import session

@@ -10,7 +10,7 @@ from typing import TYPE_CHECKING
 from lodeboard import trips as trip_table
 
 from .. import trips
-from ..errors import LinkError, LodestrokeError, Tripped
+from ..errors import LinkError, LodestrokeError, Refused, Tripped
 from ..link import Beat, BoardInfo, Client, open_port
 
 if TYPE_CHECKING:
@@ -107,7 +107,11 @@ def start(
 ) -> None:
     """Arm and go: cycles count from before + 1; last ends the program once it is complete."""
     client.command("arm", fingerprint=rig.fingerprint, program_crc32=program.crc32)
-    client.command("go", run_token=token, cycles_before=before, last_cycle=last)
+    try:
+        client.command("go", run_token=token, cycles_before=before, last_cycle=last)
+    except Refused:
+        clear_trip(client, look(client), None)   # a trip since arming is the better answer
+        raise
 
 
 def quench(client: Client) -> None:

@@ -75,7 +75,7 @@ IMPOSSIBLE = [
     ('[channel]', '[channel]\nlength = "16 mm"', "slug.length", "do not fit into the channel"),
     ('duty_cycle = 0.6', 'duty_cycle = 1.6', "limits.duty_cycle", "at most 1"),
     ('tick = "1 ms"', 'tick = "1000.3 us"', "board.tick", "whole number of microseconds"),
-    ('tick_late = "50 ms"', 'tick_late = "1.5 ms"', "tick_late", "every tick would be late"),
+    ('tick_late = "300 ms"', 'tick_late = "1.5 ms"', "tick_late", "every tick would be late"),
     ('over_current = "3.4 A"', 'over_current = "2.9 A"', "limits.current",
      "not below the over-current"),
     ('bridge = "half"', 'bridge = "hlaf"', "driver.bridge", 'did you mean "half"?'),

@@ -17,7 +17,7 @@ from lodeboard.hal_stdio import StdioHal
 from lodeboard.store import Store
 from lodeboard.wire.messages import CAN_DEADMAN, CAN_VIRTUAL, CAN_WATCHDOG
 
-DEADMAN_MS = 100             # longer than the worst pause of a busy computer's scheduler
+DEADMAN_MS = 250             # longer than the worst pause of a busy computer's scheduler
 WATCHDOG_MS = 3000
 _FIRST_US = MASK_US + 1 - 2000000     # the clock starts 2 s before its 30-bit wrap
 _RX_SIZE = 256
