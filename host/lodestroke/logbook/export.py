@@ -12,6 +12,7 @@ import pyarrow.parquet
 
 from ..errors import LodestrokeError, LogbookError
 from . import columns, reader
+from .faults import damaged
 from .open import Logbook
 from .source import rig_of
 
@@ -57,6 +58,8 @@ def export(
             bound="a folder that can be written, with room on its disk",
             try_="name another with --out",
         ) from fault
+    except (TypeError, ValueError, pa.ArrowException) as fault:  # a number that is text by now, say
+        raise damaged(f"{logbook.name}, run {run}", fault) from fault
     finally:
         _sweep(parts.values())
     return list(targets.values())
@@ -136,7 +139,7 @@ def _tick_ms(run: reader.Row) -> float | None:
     """The run's tick period from its kept rig; None when there is no rig that can be read."""
     try:
         return float(rig_of(run).board.tick) * 1000
-    except (LodestrokeError, KeyError, OSError):
+    except (LodestrokeError, KeyError, OSError, AttributeError, TypeError):
         return None
 
 

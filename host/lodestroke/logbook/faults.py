@@ -30,6 +30,7 @@ _SIGNS = (
         "the logbook cannot be opened",
         "look at the rights of the file and of its folder, or name another",
     ),
+    ("utf-8", "the logbook is damaged", "run lodestroke log verify, and restore a backup"),
     (
         "disk i/o error",
         "the disk failed or has no room",
@@ -66,6 +67,17 @@ def worded(place: str, fault: SQLAlchemyError) -> LogbookError:
         got,
         "a logbook that can be read and written",
         "look at the disk and the file's rights",
+    )
+
+
+def damaged(place: str, fault: Exception) -> LogbookError:
+    """A stored value that is not what a writer of ours put there."""
+    return LogbookError(
+        "the logbook is damaged",
+        at=place,
+        got=f"{type(fault).__name__}: {fault}",
+        bound="rows as they were written",
+        try_="run lodestroke log verify, and restore a backup",
     )
 
 

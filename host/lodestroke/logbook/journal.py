@@ -40,6 +40,18 @@ def row_sum(table: sa.Table, row: Mapping[str, Any]) -> int:
     return zlib.crc32(as_json([table.name, *values], sort_keys=True).encode())
 
 
+def made_sum(run: Mapping[str, Any]) -> int:
+    """CRC-32 of what never changes in a run's own row."""
+    names = ("id", "serial", "kind", "title", "place", "started", "meta", "sources")
+    return zlib.crc32(as_json([run[name] for name in names], sort_keys=True).encode())
+
+
+def closed_sum(run: Mapping[str, Any]) -> int:
+    """CRC-32 of how a run ended."""
+    names = ("id", "ended", "end", "summary")
+    return zlib.crc32(as_json([run[name] for name in names], sort_keys=True).encode())
+
+
 def put(
     connection: sa.Connection, table: sa.Table, rows: list[dict[str, Any]]
 ) -> tuple[int, list[str]]:

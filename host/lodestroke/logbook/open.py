@@ -17,7 +17,7 @@ from sqlalchemy.exc import ArgumentError, NoSuchModuleError, OperationalError, S
 
 from ..errors import LogbookError
 from . import schema
-from .faults import refused, worded
+from .faults import damaged, refused, worded
 
 ENVIRONMENT = "LODESTROKE_LOGBOOK"
 WAIT_S = 10.0  # for somebody else's transaction
@@ -47,6 +47,8 @@ class Logbook:
                 yield connection
         except SQLAlchemyError as fault:
             raise worded(self.name, fault) from fault
+        except (json.JSONDecodeError, UnicodeDecodeError) as fault:
+            raise damaged(self.name, fault) from fault
 
     @contextmanager
     def write(self) -> Iterator[sa.Connection]:
@@ -59,6 +61,8 @@ class Logbook:
                 yield connection
         except SQLAlchemyError as fault:
             raise worded(self.name, fault) from fault
+        except (json.JSONDecodeError, UnicodeDecodeError) as fault:
+            raise damaged(self.name, fault) from fault
 
     def close(self) -> None:
         """Let go of the database."""
@@ -88,6 +92,9 @@ def open_logbook(
     except SQLAlchemyError as fault:
         engine.dispose()
         raise worded(name, fault) from fault
+    except UnicodeDecodeError as fault:  # from a message that quotes the damaged text
+        engine.dispose()
+        raise damaged(name, fault) from fault
     except LogbookError:
         engine.dispose()
         raise

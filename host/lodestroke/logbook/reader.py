@@ -12,6 +12,7 @@ import sqlalchemy as sa
 from ..errors import LogbookError
 from ..rows import SAMPLE, sample_rows
 from . import chunks, schema
+from .faults import damaged
 from .names import resolve
 from .open import Logbook
 from .runs import clear_requests, stop_requested
@@ -53,7 +54,12 @@ def runs(logbook: Logbook) -> list[Row]:
 def run(logbook: Logbook, run_id: str) -> Row:
     """One run, whole, by id or "last". Raises LogbookError."""
     query = sa.select(schema.runs).where(schema.runs.c.id == resolve(logbook, run_id))
-    return _all(logbook, query)[0]
+    found = _all(logbook, query)
+    if not found:
+        raise damaged(
+            logbook.name, LookupError(f"run {run_id} is in the index and not in the table")
+        )
+    return found[0]
 
 
 def _of(logbook: Logbook, table: sa.Table, run_id: str, *order: str) -> list[Row]:

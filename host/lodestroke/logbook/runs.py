@@ -9,7 +9,7 @@ import sqlalchemy as sa
 from sqlalchemy.exc import IntegrityError
 
 from ..errors import LogbookError
-from . import schema
+from . import journal, schema
 from .open import Logbook
 
 KINDS = ("dry-run", "run", "endure")
@@ -55,8 +55,9 @@ def new_run(
                 last = connection.execute(sa.select(sa.func.max(schema.runs.c.serial))).scalar()
                 serial = int(last or 0) + 1
                 run = f"r{serial:04d}"
+                row |= {"id": run, "serial": serial, "chain": run}
                 connection.execute(
-                    schema.runs.insert(), {**row, "id": run, "serial": serial, "chain": run}
+                    schema.runs.insert(), {**row, "made_crc32": journal.made_sum(row)}
                 )
             return run
         except LogbookError as fault:

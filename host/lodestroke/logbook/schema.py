@@ -33,6 +33,8 @@ runs = sa.Table(
     sa.Column("chain", sa.String(64), nullable=False),  # of the last chunk; see chunks.py
     sa.Column("chunks", sa.Integer, nullable=False, default=0),
     sa.Column("counts", sa.JSON, nullable=False),  # rows written, by table
+    sa.Column("made_crc32", sa.BigInteger, nullable=False),  # of what never changes; journal.py
+    sa.Column("closed_crc32", sa.BigInteger),  # of how it ended
     sa.Column("lease_owner", sa.Text),
     sa.Column("lease_until", sa.Float, nullable=False, default=0.0),
 )

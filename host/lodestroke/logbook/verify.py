@@ -22,10 +22,20 @@ def verify(logbook: Logbook, run: str | None = None) -> list[str]:
         return problems
     for row in reader.runs(logbook):
         if run in (None, row["id"]):
-            try:
-                problems += [f"run {row['id']}: {text}" for text in _run(logbook, row)]
-            except LogbookError as fault:
-                problems.append(f"run {row['id']}: {fault.what}: {fault.got}")
+            problems += [f"run {row['id']}: {text}" for text in _guarded(logbook, row)]
+    return problems
+
+
+def _guarded(logbook: Logbook, run: reader.Row) -> list[str]:
+    """A run's problems, also when a damaged row stops the looking."""
+    problems: list[str] = []
+    try:
+        for text in _run(logbook, run):
+            problems.append(text)
+    except LogbookError as fault:
+        problems.append(f"{fault.what}: {fault.got}")
+    except (TypeError, ValueError, AttributeError) as fault:  # a number that is text by now, say
+        problems.append(f"a row cannot be understood: {fault}")
     return problems
 
 
@@ -46,7 +56,7 @@ def _database(logbook: Logbook) -> list[str]:
 
 
 def _run(logbook: Logbook, run: reader.Row) -> Iterator[str]:
-    yield from _sources(logbook, run)
+    yield from _own_row(logbook, run)
     yield from _cycles(logbook, run)
     yield from _rows(logbook, run)
     yield from _counts(logbook, run)
@@ -61,12 +71,17 @@ def _run(logbook: Logbook, run: reader.Row) -> Iterator[str]:
             yield f"noted at {note['at'][:19]}: {note['text']}"
 
 
-def _sources(logbook: Logbook, run: reader.Row) -> Iterator[str]:
-    """The kept texts of rig, schedule and plan still have the sums that were taken of them."""
-    sums = run["meta"].get("sha256") or {}
-    if not sums:
-        return
-    for role, text in reader.run(logbook, run["id"])["sources"].items():
+def _own_row(logbook: Logbook, run: reader.Row) -> Iterator[str]:
+    """What the run was and how it ended; its kept texts still have the sums taken of them."""
+    whole = reader.run(logbook, run["id"])
+    if journal.made_sum(whole) != whole["made_crc32"]:
+        yield "what it was made from was altered since"
+    if bool(whole["ended"]) != (whole["closed_crc32"] is not None):
+        yield "it is neither open nor closed"
+    elif whole["ended"] and journal.closed_sum(whole) != whole["closed_crc32"]:
+        yield "how it ended was altered since"
+    sums = whole["meta"].get("sha256") or {}
+    for role, text in whole["sources"].items():
         if role in sums and hashlib.sha256(text.encode()).hexdigest() != sums[role]:
             yield f"the kept {role} file is not the one that was run: its SHA-256 differs"
 

@@ -135,11 +135,14 @@ class Writer:
     def resumed(self) -> None:
         """Count one more resume; the run is open again. On disk when it returns."""
         self.values |= {"resumes": schema.runs.c.resumes + 1, "ended": None, "end": None}
+        self.values["closed_crc32"] = None
         self.flush()
 
     def finish(self, end: str, summary: dict[str, Any]) -> None:
         """Close the run with everything buffered: why it ended, and its figures."""
-        self.values |= {"ended": now_iso(), "end": end, "summary": summary}
+        closing = {"ended": now_iso(), "end": end, "summary": summary}
+        total = journal.closed_sum({"id": self.run, **closing})
+        self.values |= {**closing, "closed_crc32": total}
         self.flush()
 
     def release(self) -> None:

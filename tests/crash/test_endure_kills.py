@@ -1,0 +1,147 @@
+"""SIGKILL, SIGINT, SIGTERM and a cut of power, on the real command, interpreter and serial port."""
+
+from __future__ import annotations
+
+import json
+import os
+import random
+import signal
+import subprocess
+import sys
+import time
+from collections.abc import Iterator
+from pathlib import Path
+from typing import Any
+
+import pytest
+
+from lodestroke.flash import board_image
+from lodestroke.logbook import open_logbook, reader
+from lodestroke.logbook.verify import verify
+from lodestroke.rig import load_rig
+from lodestroke.virtual import VirtualBoard, available, start_board
+
+pytestmark = [
+    pytest.mark.slow,
+    pytest.mark.skipif(available() is not None, reason=f"no virtual board: {available()}"),
+]
+
+CONFIGS = Path(__file__).resolve().parents[2] / "hil_configs"
+RIG = CONFIGS / "bench-sim.toml"
+LODESTROKE = [sys.executable, "-m", "lodestroke.cli.main"]
+TARGET = 120
+
+
+class Host:
+    """The bench computer: starts the command and does to it what happens to commands."""
+
+    def __init__(self, folder: Path, board: VirtualBoard) -> None:
+        self.board = board
+        self.book = folder / "bench.db"
+        plan = (CONFIGS / "plans" / "short.toml").read_text(encoding="utf-8")
+        steady = CONFIGS / "schedules" / "steady.toml"
+        self.plan = folder / "plan.toml"
+        self.plan.write_text(
+            plan.replace("../schedules/steady.toml", steady.as_posix())
+            .replace("target_cycles = 60", f"target_cycles = {TARGET}")
+            .replace("every_cycles = 30", "every_cycles = 60"),
+            encoding="utf-8",
+        )
+
+    def start(self, *options: str) -> subprocess.Popen[str]:
+        return subprocess.Popen(
+            [*LODESTROKE, "--logbook", str(self.book), "endure", str(RIG), str(self.plan),
+             "--port", self.board.port, "--json", *options],
+            stdout=subprocess.PIPE, stderr=subprocess.PIPE, text=True,
+        )
+
+    def finish(self, process: subprocess.Popen[str], limit_s: float = 120.0) -> dict[str, Any]:
+        """Its answer; fails the test if it did not end well in time."""
+        try:
+            out, err = process.communicate(timeout=limit_s)
+        finally:
+            process.kill()
+        assert "Traceback" not in err, err
+        answer: dict[str, Any] = json.loads(out)
+        answer["code"] = process.returncode
+        return answer
+
+    def cycles(self) -> list[int]:
+        """What is on disk now; empty before there is a run."""
+        if not self.book.exists():
+            return []
+        book = open_logbook(self.book)
+        try:
+            if not reader.runs(book):
+                return []
+            return [row["cycle"] for row in reader.cycles(book, "r0001")]
+        finally:
+            book.engine.dispose()
+
+    def wait_for_cycle(self, cycle: int, process: subprocess.Popen[str]) -> None:
+        end = time.monotonic() + 60.0
+        while len(self.cycles()) < cycle:
+            assert process.poll() is None, process.communicate()
+            assert time.monotonic() < end, "no cycles come"
+            time.sleep(0.1)
+
+
+@pytest.fixture
+def host(tmp_path: Path) -> Iterator[Host]:
+    with start_board(RIG, files=board_image(load_rig(RIG))) as board:
+        yield Host(tmp_path, board)
+
+
+def whole(host: Host) -> None:
+    """Every cycle once, nothing that verify finds."""
+    assert host.cycles() == list(range(1, TARGET + 1))
+    assert verify(open_logbook(host.book)) == []
+
+
+def test_ten_kills_of_the_host_at_random_moments_lose_and_double_no_cycle(host: Host) -> None:
+    chance = random.Random(os.environ.get("LODESTROKE_KILL_SEED", "20261201"))
+    process = host.start()
+    host.wait_for_cycle(1, process)
+    for _ in range(10):
+        time.sleep(chance.uniform(0.05, 3.5))
+        process.kill()
+        process.communicate()
+        acknowledged = host.cycles()
+        assert acknowledged == list(range(1, len(acknowledged) + 1))
+        process = host.start("--resume")
+    answer = host.finish(process)
+    assert (answer["code"], answer.get("end")) == (0, "target reached"), answer
+    assert answer["cycles_done"] == answer["target_cycles"] == TARGET
+    assert answer["gaps"] == []
+    # a host that died before it had counted its resume did not resume
+    assert 1 <= answer["resumes"] <= 10
+    whole(host)
+
+
+@pytest.mark.parametrize("how", [signal.SIGINT, signal.SIGTERM])
+def test_an_interrupted_run_ends_safe_is_recorded_and_resumes(
+    host: Host, how: signal.Signals
+) -> None:
+    process = host.start()
+    host.wait_for_cycle(5, process)
+    process.send_signal(how)
+    process.send_signal(how)                   # impatience does no harm
+    answer = host.finish(process, 20.0)
+    assert (answer["code"], answer["end"]) == (130, "interrupted")
+    assert not host.board.status()["enabled"]
+    again = host.finish(host.start("--resume"))
+    assert (again["code"], again["end"], again["resumes"]) == (0, "target reached", 1)
+    assert again["gaps"] == []
+    whole(host)
+
+
+def test_power_cut_under_a_run_is_one_gap_and_the_rest_is_whole(host: Host) -> None:
+    process = host.start()
+    host.wait_for_cycle(5, process)
+    host.board.power_cut()
+    answer = host.finish(process, 30.0)
+    assert answer["code"] == 5
+    assert answer["try"]
+    again = host.finish(host.start("--resume"))
+    assert (again["code"], again["end"], len(again["gaps"])) == (0, "target reached", 1)
+    whole(host)
