@@ -6,6 +6,7 @@ import json
 import math
 import os
 import time
+import weakref
 from collections.abc import Iterator
 from contextlib import contextmanager
 from pathlib import Path
@@ -38,6 +39,7 @@ class Logbook:
         self.engine = engine
         self.name = name
         self._writing = engine.execution_options(**{_WRITES: True})
+        weakref.finalize(self, engine.dispose)  # for those who let it go without close()
 
     @contextmanager
     def read(self) -> Iterator[sa.Connection]:
