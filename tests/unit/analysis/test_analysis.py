@@ -120,7 +120,8 @@ def test_resistance_and_temperature_are_recovered_from_a_steady_current():
                  duty_a_q15=on * duty * 32767)
     result = checkups.evaluate("coil_resistance", rows, RIG)
     assert result["coil_resistance_ohm"] == pytest.approx(ohm, abs=2 * result["u_coil_resistance_ohm"])
-    assert result["winding_degc"] == pytest.approx(ohm / 8.0 * 255.0 - 235.0, abs=2 * result["u_winding_degc"])
+    hot = ohm / 8.0 * 255.0 - 235.0
+    assert result["winding_degc"] == pytest.approx(hot, abs=2 * result["u_winding_degc"])
 
 
 @pytest.mark.parametrize("value_id", ["wire.inferred.cold_start", "wire.inferred.warm_start"])

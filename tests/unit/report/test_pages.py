@@ -118,7 +118,8 @@ def axis_titles(source: str) -> set[str]:
     return {json.loads(f'"{title}"') for title in titles}
 
 
-@pytest.mark.parametrize(("cycles", "trip", "gap"), [(0, False, False), (40, False, True), (12, True, False)])
+@pytest.mark.parametrize(
+    ("cycles", "trip", "gap"), [(0, False, False), (40, False, True), (12, True, False)])
 def test_report_holds_every_section_of_any_run(logbook, tmp_path, cycles, trip, gap):
     page = Page(write_report(logbook, a_run(logbook, cycles, trip, gap), tmp_path / "r.html"))
     check_self_contained(page)
