@@ -76,10 +76,10 @@ TABLES = {
 def drawn(text: str) -> str:
     """The page with every marked table drawn anew."""
     for name, draw in TABLES.items():
-        pattern = rf"(<!-- table {name} -->\n).*?(\n<!-- end {name} -->)"
+        pattern = rf"(<!-- table {name} -->\n).*?(<!-- end {name} -->)"
         body = draw()
         text, count = re.subn(
-            pattern, lambda found, body=body: found[1] + body + found[2], text, flags=re.S
+            pattern, lambda found, body=body: found[1] + body + "\n" + found[2], text, flags=re.S
         )
         if count != 1:
             raise SystemExit(f"DEVELOPERS.md lacks the markers of table {name}")
