@@ -29,7 +29,6 @@ pytestmark = [
 CONFIGS = Path(__file__).resolve().parents[2] / "hil_configs"
 RIG = CONFIGS / "bench-sim.toml"
 LODESTROKE = [sys.executable, "-m", "lodestroke.cli.main"]
-TARGET = 120
 
 
 class Host:
@@ -37,16 +36,22 @@ class Host:
 
     def __init__(self, folder: Path, board: VirtualBoard) -> None:
         self.board = board
+        self.target = 0
         self.book = folder / "bench.db"
-        plan = (CONFIGS / "plans" / "short.toml").read_text(encoding="utf-8")
-        steady = CONFIGS / "schedules" / "steady.toml"
         self.plan = folder / "plan.toml"
-        self.plan.write_text(
-            plan.replace("../schedules/steady.toml", steady.as_posix())
-            .replace("target_cycles = 60", f"target_cycles = {TARGET}")
-            .replace("every_cycles = 30", "every_cycles = 60"),
-            encoding="utf-8",
-        )
+
+    def aim(self, target: int, items: str = "") -> None:
+        """Write the plan: so many cycles, check-ups in the middle and at the end."""
+        steady = CONFIGS / "schedules" / "steady.toml"
+        text = (CONFIGS / "plans" / "short.toml").read_text(encoding="utf-8")
+        text = text.replace("../schedules/steady.toml", steady.as_posix())
+        text = text.replace("target_cycles = 60", f"target_cycles = {target}")
+        text = text.replace("every_cycles = 30", f"every_cycles = {target // 2}")
+        if items:
+            row = next(line for line in text.splitlines() if line.startswith("items"))
+            text = text.replace(row, f"items = [{items}]")
+        self.plan.write_text(text, encoding="utf-8")
+        self.target = target
 
     def start(self, *options: str) -> subprocess.Popen[str]:
         return subprocess.Popen(
@@ -94,11 +99,12 @@ def host(tmp_path: Path) -> Iterator[Host]:
 
 def whole(host: Host) -> None:
     """Every cycle once, nothing that verify finds."""
-    assert host.cycles() == list(range(1, TARGET + 1))
+    assert host.cycles() == list(range(1, host.target + 1))
     assert verify(open_logbook(host.book)) == []
 
 
 def test_ten_kills_of_the_host_at_random_moments_lose_and_double_no_cycle(host: Host) -> None:
+    host.aim(100)
     chance = random.Random(os.environ.get("LODESTROKE_KILL_SEED", "20261201"))
     process = host.start()
     host.wait_for_cycle(1, process)
@@ -111,7 +117,7 @@ def test_ten_kills_of_the_host_at_random_moments_lose_and_double_no_cycle(host: 
         process = host.start("--resume")
     answer = host.finish(process)
     assert (answer["code"], answer.get("end")) == (0, "target reached"), answer
-    assert answer["cycles_done"] == answer["target_cycles"] == TARGET
+    assert answer["cycles_done"] == answer["target_cycles"] == host.target
     assert answer["gaps"] == []
     # a host that died before it had counted its resume did not resume
     assert 1 <= answer["resumes"] <= 10
@@ -122,6 +128,7 @@ def test_ten_kills_of_the_host_at_random_moments_lose_and_double_no_cycle(host: 
 def test_an_interrupted_run_ends_safe_is_recorded_and_resumes(
     host: Host, how: signal.Signals
 ) -> None:
+    host.aim(40, '"coil_resistance"')
     process = host.start()
     host.wait_for_cycle(5, process)
     process.send_signal(how)
@@ -136,6 +143,7 @@ def test_an_interrupted_run_ends_safe_is_recorded_and_resumes(
 
 
 def test_power_cut_under_a_run_is_one_gap_and_the_rest_is_whole(host: Host) -> None:
+    host.aim(40, '"coil_resistance"')
     process = host.start()
     host.wait_for_cycle(5, process)
     host.board.power_cut()
