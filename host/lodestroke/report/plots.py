@@ -32,9 +32,9 @@ def _figure(title: str, x: str, y: str, height: int = 340) -> go.Figure:
         title={"text": title, "font": {"size": 15}},
         height=height,
         template="plotly_white",
-        margin={"l": 70, "r": 20, "t": 50, "b": 50},
+        margin={"l": 70, "r": 20, "t": 50, "b": 80},
         hovermode="x unified",
-        legend={"orientation": "h", "y": 1.12, "x": 1, "xanchor": "right"},
+        legend={"orientation": "h", "y": -0.2, "x": 0.5, "xanchor": "center", "yanchor": "top"},
     )
     figure.update_xaxes(title_text=x)
     figure.update_yaxes(title_text=y)
