@@ -124,7 +124,7 @@ LIMITS = (
         'chamber_high = { soft = "89 cmH2O", hard = "90 cmH2O" }',
     ),
     (
-        'chamber_low = { soft = "-25 cmH2O", hard = "-32 cmH2O" }',
+        'chamber_low = { soft = "-20 cmH2O", hard = "-25 cmH2O" }',
         'chamber_low = { soft = "-89 cmH2O", hard = "-90 cmH2O" }',
     ),
 )
