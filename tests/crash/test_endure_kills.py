@@ -55,9 +55,21 @@ class Host:
 
     def start(self, *options: str) -> subprocess.Popen[str]:
         return subprocess.Popen(
-            [*LODESTROKE, "--logbook", str(self.book), "endure", str(RIG), str(self.plan),
-             "--port", self.board.port, "--json", *options],
-            stdout=subprocess.PIPE, stderr=subprocess.PIPE, text=True,
+            [
+                *LODESTROKE,
+                "--logbook",
+                str(self.book),
+                "endure",
+                str(RIG),
+                str(self.plan),
+                "--port",
+                self.board.port,
+                "--json",
+                *options,
+            ],
+            stdout=subprocess.PIPE,
+            stderr=subprocess.PIPE,
+            text=True,
         )
 
     def finish(self, process: subprocess.Popen[str], limit_s: float = 120.0) -> dict[str, Any]:
@@ -104,7 +116,7 @@ def whole(host: Host) -> None:
 
 
 def test_ten_kills_of_the_host_at_random_moments_lose_and_double_no_cycle(host: Host) -> None:
-    host.aim(100)
+    host.aim(90)
     chance = random.Random(os.environ.get("LODESTROKE_KILL_SEED", "20261201"))
     process = host.start()
     host.wait_for_cycle(1, process)
@@ -124,15 +136,12 @@ def test_ten_kills_of_the_host_at_random_moments_lose_and_double_no_cycle(host: 
     whole(host)
 
 
-@pytest.mark.parametrize("how", [signal.SIGINT, signal.SIGTERM])
-def test_an_interrupted_run_ends_safe_is_recorded_and_resumes(
-    host: Host, how: signal.Signals
-) -> None:
+def test_an_interrupted_run_ends_safe_is_recorded_and_resumes(host: Host) -> None:
     host.aim(40, '"coil_resistance"')
     process = host.start()
     host.wait_for_cycle(5, process)
-    process.send_signal(how)
-    process.send_signal(how)                   # impatience does no harm
+    process.send_signal(signal.SIGTERM)
+    process.send_signal(signal.SIGINT)  # impatience does no harm
     answer = host.finish(process, 20.0)
     assert (answer["code"], answer["end"]) == (130, "interrupted")
     assert not host.board.status()["enabled"]

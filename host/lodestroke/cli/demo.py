@@ -13,7 +13,7 @@ from pathlib import Path
 
 import click
 
-from ..errors import Exit, Interrupted, LodestrokeError
+from ..errors import Exit, Interrupted, LodestrokeError, LogbookError
 from .common import fail, say
 
 _STEP_S = 60.0
@@ -127,7 +127,7 @@ class Demo:
             "pump",
         )
         self.step(
-            "Start the endurance test, and interrupt it with Ctrl-C after six seconds",
+            "Start the endurance test, and interrupt it with Ctrl-C after a dozen cycles",
             "--logbook",
             self.log,
             "endure",
@@ -135,7 +135,7 @@ class Demo:
             plan,
             "--port",
             "pump",
-            interrupt_s=6.0,
+            interrupt_after=12,
             expect=Exit.INTERRUPTED,
         )
         self.step(
@@ -164,16 +164,19 @@ class Demo:
         )
 
     def step(
-        self, what: str, *arguments: str, expect: int = Exit.DONE, interrupt_s: float | None = None
+        self,
+        what: str,
+        *arguments: str,
+        expect: int = Exit.DONE,
+        interrupt_after: int | None = None,
     ) -> None:
         """One command, its output shown; it must end with the exit code expected."""
         self.number += 1
         say(f"\n{self.number}. {what}\n   $ lodestroke {' '.join(arguments)}")
         process = self._start(*arguments)
         try:
-            if interrupt_s is not None:
-                with contextlib.suppress(subprocess.TimeoutExpired):
-                    process.wait(interrupt_s)
+            if interrupt_after is not None:
+                self._wait_for_cycles(interrupt_after, process)
                 process.send_signal(signal.SIGINT)
             code = process.wait(_STEP_S)
         except subprocess.TimeoutExpired as fault:
@@ -194,6 +197,20 @@ class Demo:
                 bound=f"exit code {int(expect)}",
                 try_="run the step alone to see why",
             )
+
+    def _wait_for_cycles(self, cycles: int, process: subprocess.Popen[bytes]) -> None:
+        """Until so many are in the logbook, or the step has ended, or its time is over."""
+        from ..logbook import open_logbook, reader
+
+        end = time.monotonic() + _STEP_S
+        while process.poll() is None and time.monotonic() < end:
+            time.sleep(0.2)
+            if not (self.folder / self.log).exists():
+                continue
+            with contextlib.suppress(LogbookError):  # it may be half made yet
+                book = open_logbook(self.folder / self.log, create=False)
+                if reader.runs(book) and reader.last_cycle(book, "r0001") >= cycles:
+                    return
 
     def _start(self, *arguments: str) -> subprocess.Popen[bytes]:
         return subprocess.Popen(

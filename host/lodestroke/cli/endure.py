@@ -82,7 +82,8 @@ def command(
             f"{len(summary['gaps'])} gaps, logged in {logbook.name}"
         )
     if summary["end"] == "interrupted":
-        say(f"resume it: lodestroke endure {rig} {plan} --port {name} --resume")
+        book = f"--logbook {ctx.obj['logbook']} " if ctx.obj.get("logbook") else ""
+        say(f"resume it: lodestroke {book}endure {rig} {plan} --port {name} --resume")
         raise SystemExit(int(Exit.INTERRUPTED))
     if summary["end"].startswith("tripped"):
         raise SystemExit(int(Exit.TRIPPED))
