@@ -116,7 +116,7 @@ def whole(host: Host) -> None:
 
 
 def test_ten_kills_of_the_host_at_random_moments_lose_and_double_no_cycle(host: Host) -> None:
-    host.aim(90)
+    host.aim(100)
     chance = random.Random(os.environ.get("LODESTROKE_KILL_SEED", "20261201"))
     process = host.start()
     host.wait_for_cycle(1, process)
