@@ -8,13 +8,19 @@ from typing import Any
 import click
 
 from ..errors import Exit, LodestrokeError
-from .common import Progress, emit_json, fail, json_option, say
+from .common import Progress, emit_json, fail, json_option, open_log, say
 
 
 @click.command()
 @click.argument("rig", type=click.Path())
 @click.argument("schedule", type=click.Path())
-@click.option("--seed", default=0, show_default=True, help="0 is the nominal pump; others vary it.")
+@click.option(
+    "--seed",
+    type=click.IntRange(0),
+    default=0,
+    show_default=True,
+    help="0 is the nominal pump; others vary it.",
+)
 @click.option(
     "--on",
     "place",
@@ -24,10 +30,19 @@ from .common import Progress, emit_json, fail, json_option, say
 )
 @click.option("--out", metavar="FOLDER", help="Write dry-run.json, samples.csv and a page there.")
 @json_option
-def command(rig: str, schedule: str, seed: int, place: str, out: str | None, as_json: bool) -> None:
+@click.pass_context
+def command(
+    ctx: click.Context,
+    rig: str,
+    schedule: str,
+    seed: int,
+    place: str,
+    out: str | None,
+    as_json: bool,
+) -> None:
     """Run a schedule in simulated time and say what would happen.
 
-    Exit code 3 when an interlock trips.
+    Exit code 3 when an interlock trips. Logged only where --logbook names a logbook.
     """
     from ..rig import load_rig
     from ..runner import dry_run
@@ -51,6 +66,8 @@ def command(rig: str, schedule: str, seed: int, place: str, out: str | None, as_
             finally:
                 bar.close()
         files = _write(Path(out), shown, loaded) if out else []
+        if ctx.obj["logbook"]:
+            _log(ctx, shown, loaded, plan)
     except LodestrokeError as error:
         fail(error, as_json)
     _tell(shown.result, as_json, files)
@@ -58,6 +75,15 @@ def command(rig: str, schedule: str, seed: int, place: str, out: str | None, as_
         raise SystemExit(int(Exit.INTERRUPTED))
     if shown.result["trips"]:
         raise SystemExit(int(Exit.TRIPPED))
+
+
+def _log(ctx: click.Context, shown: Any, rig: Any, schedule: Any) -> None:
+    from ..flash import bundle_id_for
+    from ..runner import log_dry_run
+
+    logbook = open_log(ctx)
+    run = log_dry_run(logbook, shown, rig, schedule, bundle_id_for(rig))
+    say(f"logged as {run} in {logbook.name}")
 
 
 def _tell(result: dict[str, Any], as_json: bool, files: list[Path]) -> None:

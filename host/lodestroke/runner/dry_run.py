@@ -12,8 +12,9 @@ import numpy as np
 from .. import trips
 from ..errors import ScheduleError
 from ..link import Client
+from ..logbook import Logbook, Writer, new_run
 from ..rows import sample_rows
-from . import session
+from . import record, session
 from .collect import Collector, Memory, Outcome
 
 if TYPE_CHECKING:
@@ -26,12 +27,13 @@ _DRY_TOKEN = 1
 
 @dataclass(frozen=True)
 class DryRun:
-    """What a dry-run showed: the figures of --json, every sample, cycles and marks."""
+    """What a dry-run showed: the figures of --json, every sample, cycles, marks, trips."""
 
     result: dict[str, Any]
     samples: np.ndarray
     cycles: list[dict[str, int]]
     marks: list[dict[str, int]]
+    trips: list[dict[str, int]]
 
 
 def open_engine(rig: Rig, seed: int, on: str) -> Any:
@@ -88,7 +90,7 @@ def dry_run(
         cycles_planned=program.cycles,
         ticks_planned=program.ticks,
     )
-    return DryRun(result, sample_rows(rows), sink.cycles, sink.marks)
+    return DryRun(result, sample_rows(rows), sink.cycles, sink.marks, outcome.trips)
 
 
 def _figures(
@@ -111,3 +113,34 @@ def _figures(
         "end": outcome.asked_to_stop or outcome.why,
         "trace_sha256": hashlib.sha256(rows).hexdigest(),
     }
+
+
+def log_dry_run(
+    logbook: Logbook, dry: DryRun, rig: Rig, schedule: Schedule, bundle_id: bytes
+) -> str:
+    """A dry-run as a run of the logbook, seed and hashes with it; its id. Raises LogbookError."""
+    files = {"schedule": schedule.source}
+    sources = record.sources_of(rig, **files)
+    meta = record.describe(rig, sources, files, bundle_id, seed=dry.result["seed"])
+    run_id = new_run(
+        logbook,
+        "dry-run",
+        title=schedule.title,
+        place=str(dry.result["on"]),
+        meta=meta,
+        sources=sources,
+    )
+    with Writer(logbook, run_id) as writer:
+        writer.begin(0, 0, 1)
+        for fields in dry.cycles:
+            writer.cycle(fields)
+        for fields in dry.marks:
+            writer.mark(fields)
+        for fields in dry.trips:
+            writer.trip(fields)
+        writer.samples(dry.samples.tobytes())
+        writer.finish(
+            str(dry.result["end"]),
+            {**dry.result, "run": run_id, "cycles_done": dry.result["cycles"]},
+        )
+    return run_id

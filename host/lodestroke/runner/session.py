@@ -110,7 +110,7 @@ def start(
     try:
         client.command("go", run_token=token, cycles_before=before, last_cycle=last)
     except Refused:
-        clear_trip(client, look(client), None)   # a trip since arming is the better answer
+        clear_trip(client, look(client), None)  # a trip since arming is the better answer
         raise
 
 

@@ -53,3 +53,23 @@ def test_without_json_each_figure_stands_on_a_line_of_its_own(lodestroke: Run) -
     figures = dict(line.split(None, 1) for line in ended.out.splitlines())
     assert figures["end"] == "finished"
     assert len(figures["trace_sha256"]) == 64
+
+
+def test_a_named_logbook_keeps_the_dry_run_with_its_trip_and_samples(
+    lodestroke: Run, tmp_path: Path
+) -> None:
+    book = tmp_path / "bench.db"
+    ended = lodestroke("--logbook", book, "dry-run", SIM, OVERDRIVE, "--seed", 7, "--json")
+    assert ended.code == Exit.TRIPPED
+    answer = json.loads(ended.out)
+    shown = json.loads(lodestroke("--logbook", book, "log", "show", "last", "--json").out)
+    assert "dry-run" in json.dumps(shown)
+    assert answer["trace_sha256"] in json.dumps(shown)
+    assert lodestroke("--logbook", book, "log", "verify").code == 0
+    page = tmp_path / "page.html"
+    assert lodestroke("--logbook", book, "report", "last", "--out", page).code == 0
+    assert page.stat().st_size > 10_000
+
+
+def test_a_seed_below_zero_is_bad_input(lodestroke: Run) -> None:
+    assert lodestroke("dry-run", SIM, GENTLE, "--seed", -1).code == Exit.BAD_INPUT
