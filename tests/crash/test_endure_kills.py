@@ -5,11 +5,12 @@ from __future__ import annotations
 import json
 import os
 import random
+import resource
 import signal
 import subprocess
 import sys
 import time
-from collections.abc import Iterator
+from collections.abc import Callable, Iterator
 from pathlib import Path
 from typing import Any
 
@@ -53,7 +54,9 @@ class Host:
         self.plan.write_text(text, encoding="utf-8")
         self.target = target
 
-    def start(self, *options: str) -> subprocess.Popen[str]:
+    def start(
+        self, *options: str, preexec_fn: Callable[[], None] | None = None
+    ) -> subprocess.Popen[str]:
         return subprocess.Popen(
             [
                 *LODESTROKE,
@@ -70,6 +73,7 @@ class Host:
             stdout=subprocess.PIPE,
             stderr=subprocess.PIPE,
             text=True,
+            preexec_fn=preexec_fn,  # noqa: PLW1509 - no thread runs here
         )
 
     def finish(self, process: subprocess.Popen[str], limit_s: float = 120.0) -> dict[str, Any]:
@@ -107,6 +111,14 @@ class Host:
 def host(tmp_path: Path) -> Iterator[Host]:
     with start_board(RIG, files=board_image(load_rig(RIG))) as board:
         yield Host(tmp_path, board)
+
+
+def until(condition: Callable[[], bool], limit_s: float) -> None:
+    """Wait for a condition; fails the test when it does not come true."""
+    end = time.monotonic() + limit_s
+    while not condition():
+        assert time.monotonic() < end, "waited in vain"
+        time.sleep(0.02)
 
 
 def whole(host: Host) -> None:
@@ -161,4 +173,22 @@ def test_power_cut_under_a_run_is_one_gap_and_the_rest_is_whole(host: Host) -> N
     assert answer["try"]
     again = host.finish(host.start("--resume"))
     assert (again["code"], again["end"], len(again["gaps"])) == (0, "target reached", 1)
+    whole(host)
+
+
+def test_a_disk_that_fills_up_stops_the_board_and_loses_no_cycle(host: Host) -> None:
+    host.aim(40, '"coil_resistance"')
+
+    def small_disk() -> None:
+        signal.signal(signal.SIGXFSZ, signal.SIG_IGN)
+        resource.setrlimit(resource.RLIMIT_FSIZE, (400_000, 400_000))
+
+    answer = host.finish(host.start(preexec_fn=small_disk), 60.0)
+    assert answer["code"] == 7
+    assert answer["try"]
+    until(lambda: not host.board.status()["enabled"], 2.0)
+    on_disk = host.cycles()
+    assert on_disk == list(range(1, len(on_disk) + 1))
+    again = host.finish(host.start("--resume"))
+    assert (again["code"], again["end"], again["gaps"]) == (0, "target reached", [])
     whole(host)
