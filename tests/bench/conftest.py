@@ -67,7 +67,7 @@ class Bench:
         while (beat := self.beat()).state != state:
             assert self.client.port.now_s() < end_s, f"{beat.state}, never {state}"
             self.run_on(0.05)
-        self.run_on(0.2)
+        self.run_on(0.5)  # the tail of its samples, then the latch goes to flash
         return beat
 
     def silence(self, seconds: float) -> None:
