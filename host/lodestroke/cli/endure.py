@@ -43,6 +43,7 @@ def command(
 ) -> None:
     """Run an endurance plan on the board; one run, also when resumed."""
     from ..flash import bundle_id_for
+    from ..margin import prove_plan
     from ..rig import load_rig
     from ..runner import endure
     from ..schedule import load_plan, load_schedule
@@ -51,6 +52,7 @@ def command(
         loaded = load_rig(rig)
         test = load_plan(plan)
         schedule = load_schedule(test.schedule)
+        prove_plan(test, loaded)  # the heat of the whole plan, before anything is opened
         name = board_port(loaded, port)
         _ask_for_cutout(loaded.board.kind, cutout_fitted)
         confirm_energising(loaded.board.kind, yes)

@@ -209,3 +209,16 @@ def test_files_of_a_dry_run_that_cannot_be_written_are_told(
     ended = lodestroke("dry-run", SIM, GENTLE, "--out", taken)
     assert ended.code == Exit.BAD_INPUT
     assert "--out" in ended.parts()["at"]
+
+
+def test_a_plan_that_would_cook_the_coil_is_refused_before_any_port_is_opened(
+    lodestroke: Run, tmp_path: Path
+) -> None:
+    steady = (CONFIGS / "schedules" / "steady.toml").read_text(encoding="utf-8")
+    (tmp_path / "hot.toml").write_text(steady.replace('"0.9 A"', '"2.2 A"'), encoding="utf-8")
+    plan = tmp_path / "plan.toml"
+    text = SHORT.read_text(encoding="utf-8").replace("../schedules/steady.toml", "hot.toml")
+    plan.write_text(text.replace("target_cycles = 60", "target_cycles = 60000"), encoding="utf-8")
+    ended = lodestroke("endure", SIM, plan, "--port", NOWHERE)
+    assert ended.code == Exit.BAD_INPUT
+    assert ended.parts()["what"] == "the coil would get too hot over the whole plan"
