@@ -36,7 +36,7 @@ class Board:
         self.limits = Limits()
         self.program = Program()
         self.sequencer = Sequencer(self.program, self.limits)
-        self.sensors = Sensors(hal, self.limits)
+        self.sensors = Sensors(self.limits)
         self.interlocks = Interlocks(self.limits, self.sensors)
         self.thermal = Coil()
         self.regulator_a = Regulator()
@@ -108,7 +108,7 @@ class Board:
                 not self.hal.capabilities & messages.CAN_DEADMAN:
             return messages.NO_DEADMAN
         self._load()
-        if self.sensors.read() or self.sensors.any_bad():
+        if self.sensors.convert() or self.sensors.any_bad():
             return messages.NOT_PLAUSIBLE
         guarded = self.hal.start_guards()
         if not guarded and self.limits.get("deadman_needed"):

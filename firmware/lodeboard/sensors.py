@@ -1,23 +1,21 @@
 """Raw counts to Pa, mA and mV in integers, and whether they can be believed.
 
-read() allocates nothing. While a channel is out of range for fewer than sensor_bad_ticks ticks, its
+convert() allocates nothing. While a channel is out of range for fewer than sensor_bad_ticks ticks, its
 last good value stands in.
 """
 
 from array import array
 
 from . import trips
-from .hal import Hal
 from .limits import CHANNEL_STRIDE, INDEX, N_CHANNELS, Limits
 
 _BAD_TICKS = INDEX["sensor_bad_ticks"]
 
 
 class Sensors:
-    """values[channel] after each read(); the first implausible channel in `channel`."""
+    """values[channel] after each convert(); the first implausible channel in `channel`."""
 
-    def __init__(self, hal: Hal, limits: Limits) -> None:
-        self.hal = hal
+    def __init__(self, limits: Limits) -> None:
         self.limits = limits
         self.counts = array("i", [0] * N_CHANNELS)
         self.values = array("i", [0] * N_CHANNELS)
@@ -44,10 +42,12 @@ class Sensors:
                 self.present[self.n_present] = channel
                 self.n_present += 1
 
-    def read(self) -> int:
-        """Read, convert, check; a trip code or 0. The order of channels decides which is first."""
+    def convert(self) -> int:
+        """Convert and check the counts; a trip code or 0. The order of channels decides which is first.
+
+        The tick reads the counts, and nobody else: one read a period, in every place.
+        """
         counts = self.counts
-        self.hal.read_counts(counts)
         v = self.limits.values
         bad_ticks = v[_BAD_TICKS]
         found = 0
@@ -81,7 +81,7 @@ class Sensors:
         return found
 
     def any_bad(self) -> bool:
-        """Whether any channel that is there was out of range in the last read."""
+        """Whether any channel that is there was out of range when last converted."""
         for channel in range(N_CHANNELS):
             if self.bad[channel]:
                 return True

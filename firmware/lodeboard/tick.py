@@ -55,7 +55,9 @@ class Tick:
 
     def run(self, late_us: int) -> None:
         """One tick, late_us after it was due."""
-        code = self.sensors.read()
+        sensors = self.sensors
+        self.hal.read_counts(sensors.counts)
+        code = sensors.convert()
         self._judge(code, late_us)
         state = self.board.state
         if state == states.RUNNING:

@@ -56,6 +56,7 @@ class Bench:
             self.hal.counts[channel] = counts_for(self.board.limits.values, channel, value)
 
     def arm(self) -> int:
+        self.hal.read_counts(self.board.sensors.counts)      # as the tick before has done
         return self.board.arm(self.fingerprint, self.board.program.blob.crc32)
 
     def go(self, last: int = 0) -> None:

@@ -21,7 +21,7 @@ def judge(values: dict[str, int], winding_mc: int = 22000, target_ma: int = 0):
     for name, value in V.items():
         store.values[limits.INDEX[name]] = value
     store.relax()
-    sensors = Sensors(None, store)
+    sensors = Sensors(store)
     sensors.load()
     for channel in (limits.CHAMBER, limits.OUTLET, limits.COIL_A):
         sensors.values[channel] = 0

@@ -39,6 +39,7 @@ for data in (hello, stream):
     hal.rx_at, hal.rx_n = 0, len(data)
     loop.step()
     loop.step()
+board.hal.read_counts(board.sensors.counts)      # as the tick before has done
 assert board.arm(FINGERPRINT, board.program.blob.crc32) == 0
 board.unlock()
 gc.disable()

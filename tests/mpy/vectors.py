@@ -21,6 +21,7 @@ def note(*numbers):
 
 
 hal, board, loop = board_ready()
+board.hal.read_counts(board.sensors.counts)      # as the tick before has done
 assert board.arm(FINGERPRINT, board.program.blob.crc32) == 0
 board.unlock()                                          # this script itself allocates
 assert board.go(5, 0, 0) == 0

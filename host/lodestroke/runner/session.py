@@ -19,6 +19,9 @@ if TYPE_CHECKING:
     from ..schedule import Program
 
 
+TAIL_S = 2.0  # the longest tail after a run's end, with time to spare
+
+
 def new_token() -> int:
     """A number that ties what a board reports to one run; 30 bits, never 0."""
     return secrets.randbelow((1 << 30) - 1) + 1
@@ -97,7 +100,15 @@ def load(client: Client, rig: Rig, program: Program, every_ticks: int) -> None:
     from ..rig import limits_blob
 
     blob, crc32 = limits_blob(rig)
-    client.send_limits(blob, crc32, rig.fingerprint)
+    end_s = client.port.now_s() + TAIL_S
+    while True:
+        try:
+            client.send_limits(blob, crc32, rig.fingerprint)
+            break
+        except Refused:
+            # safe already, but the recorder's tail of the last run is still being taken
+            if look(client).state != "safe" or client.port.now_s() > end_s:
+                raise
     client.send_program(program.records, program.crc32, rig.fingerprint)
     client.command("stream", every_ticks=every_ticks)
 

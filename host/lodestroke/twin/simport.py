@@ -7,6 +7,9 @@ from typing import Protocol
 from ..errors import PortLost
 from .lockstep import Lockstep
 
+# A host looks a hundred times a second or so; looking at each tick costs a third more.
+_BATCH_TICKS = 8
+
 
 class Engine(Protocol):
     """What a SimPort needs of a simulated board."""
@@ -40,10 +43,21 @@ class SimPort:
         if timeout_s > 0 and left_ticks == 0:
             left_ticks = 1
         while not data and left_ticks > 0:
-            self.engine.advance()
-            left_ticks -= 1
+            lost = self._advance(min(left_ticks, _BATCH_TICKS))
+            left_ticks -= _BATCH_TICKS
             data = lockstep.host_read()
+            if lost is not None and not data:
+                raise lost
         return data
+
+    def _advance(self, ticks: int) -> PortLost | None:
+        """So many control periods, unless the board goes: its last bytes are still to be read."""
+        try:
+            for _ in range(ticks):
+                self.engine.advance()
+        except PortLost as lost:
+            return lost
+        return None
 
     def write(self, data: bytes) -> None:
         """Queue bytes; the firmware gets them as it takes them."""
