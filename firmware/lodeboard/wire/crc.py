@@ -49,16 +49,21 @@ if MICROPYTHON:
         pass                       # no viper emitter on this port: the bytecode does it
 
 
-def seal(buf: bytearray, start: int, n: int) -> None:
-    """Write the CRC of buf[start:start+n] behind it."""
+def _compute(buf: bytearray, start: int, n: int) -> None:
+    """Both halves of the CRC of buf[start:start+n] into the result places of _work."""
     if MICROPYTHON:
         _halves(buf, start, n, _work)
-        lo = _work[_OUT]
-        hi = _work[_OUT + 1]
-    else:
-        crc = binascii.crc32(memoryview(buf)[start : start + n])
-        lo = crc & 0xFFFF
-        hi = crc >> 16
+        return
+    crc = binascii.crc32(memoryview(buf)[start : start + n])
+    _work[_OUT] = crc & 0xFFFF
+    _work[_OUT + 1] = crc >> 16
+
+
+def seal(buf: bytearray, start: int, n: int) -> None:
+    """Write the CRC of buf[start:start+n] behind it."""
+    _compute(buf, start, n)
+    lo = _work[_OUT]
+    hi = _work[_OUT + 1]
     at = start + n
     buf[at] = lo & 0xFF
     buf[at + 1] = lo >> 8
@@ -68,13 +73,8 @@ def seal(buf: bytearray, start: int, n: int) -> None:
 
 def holds(buf: bytearray, start: int, n: int) -> bool:
     """Whether the four bytes behind buf[start:start+n] are its CRC."""
-    if MICROPYTHON:
-        _halves(buf, start, n, _work)
-        lo = _work[_OUT]
-        hi = _work[_OUT + 1]
-    else:
-        crc = binascii.crc32(memoryview(buf)[start : start + n])
-        lo = crc & 0xFFFF
-        hi = crc >> 16
+    _compute(buf, start, n)
     at = start + n
-    return bool(buf[at] | (buf[at + 1] << 8) == lo and buf[at + 2] | (buf[at + 3] << 8) == hi)
+    low = buf[at] | (buf[at + 1] << 8)
+    high = buf[at + 2] | (buf[at + 3] << 8)
+    return low == _work[_OUT] and high == _work[_OUT + 1]
