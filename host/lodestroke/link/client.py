@@ -3,7 +3,9 @@
 from __future__ import annotations
 
 import binascii
+import codecs
 from collections import deque
+from collections.abc import Callable
 
 from lodeboard.wire import messages
 from lodeboard.wire.frames import UpReader, build_down
@@ -17,6 +19,7 @@ RESEND_S = 0.15
 TRIES = 8
 BEAT_S = 0.1
 _PART = 32
+_OLD = 192  # a frame number so far ahead is one from before, come twice
 
 
 class Client:
@@ -29,7 +32,11 @@ class Client:
         self.events: deque[Event] = deque()
         self.saved_entry = 0  # on disk here
         self.seen_entry = 0  # handed on
+        self.claimed = 0  # what hello() was told to be on disk
+        self.greeting = False  # until a hello is answered nobody knows whose journal it is
+        self.recalling = False
         self.up_frame = 0  # last up frame number
+        self.lost_frames = 0
         self.since_beat = 0  # frames since our last beat
         self.beat_at = port.now_s()
         self.number = 0
@@ -37,6 +44,7 @@ class Client:
         self.hello_seen: BoardInfo | None = None
         self.resends = 0
         self.text_tail = ""  # the last text the board printed, for error messages
+        self.decoder = codecs.getincrementaldecoder("utf-8")("backslashreplace")
 
     # commands
 
@@ -50,19 +58,20 @@ class Client:
             "hello", {"wire_version": messages.WIRE_VERSION, "saved_entry": saved_entry or 0}
         )
         self.hello_seen = None
-        for _ in range(TRIES):
-            self.port.write(b"~" + build_down(code, 0, body))
-            if self._wait(lambda: self.hello_seen is not None, RESEND_S * 2):
-                break
+        self.claimed = saved_entry or 0
+        self.greeting = True
+        try:
+            for _ in range(TRIES):
+                self.port.write(b"~" + build_down(code, 0, body))
+                if self._wait(lambda: self.hello_seen is not None, RESEND_S * 2):
+                    break
+        finally:
+            self.greeting = False
         info = self.hello_seen
         if info is None:
-            raise self._silent("hello")
-        self.number = 0
+            raise self._silent("hello", TRIES * RESEND_S * 2)
         self._check_wire(info)
-        if self.info is None or self.info.boot_nonce != info.boot_nonce:
-            self.saved_entry = max(saved_entry or 0, info.oldest_entry - 1)
-            self.seen_entry = self.saved_entry
-        self.info = info
+        self.number = 0
         self._beat()
         return info
 
@@ -91,7 +100,7 @@ class Client:
             if self._wait(self._answered, RESEND_S):
                 break
         else:
-            raise self._silent(name)
+            raise self._silent(name, TRIES * RESEND_S)
         reply = self.reply
         assert reply is not None
         if reply.result != messages.OK:
@@ -119,11 +128,24 @@ class Client:
         self.command("seal", blob=blob, length=len(data), crc32=crc32, fingerprint=fingerprint)
 
     def recall(self, timeout_s: float = 20.0) -> bytes:
-        """All rows of the flight recorder, oldest first, packed one after another."""
-        total = self.command("recall", first=0, count=0xFFFF)
-        rows: dict[int, bytes] = {}
+        """The rows of the flight recorder, oldest first, packed one after another.
+
+        Each carries its tick; a row that has not come within timeout_s is missing.
+        """
+        self.recalling = True
         kept: list[Event] = []
-        end_s = self.port.now_s() + timeout_s
+        try:
+            total = self.command("recall", first=0, count=0xFFFF)
+            rows = self._collect_rows(total, kept, self.port.now_s() + timeout_s)
+        finally:
+            self.recalling = False
+            kept += (event for event in self.events if not isinstance(event, Recorded))
+            self.events = deque(kept)
+        return b"".join(rows[i] for i in sorted(rows))
+
+    def _collect_rows(self, total: int, kept: list[Event], end_s: float) -> dict[int, bytes]:
+        """Rows by number as they come; asks again from the first that is missing."""
+        rows: dict[int, bytes] = {}
         quiet_s = self.port.now_s()
         while len(rows) < total and self.port.now_s() < end_s:
             event = self.poll(0.1)
@@ -136,8 +158,7 @@ class Client:
                 first = next(i for i in range(total) if i not in rows)
                 self.command("recall", first=first, count=0xFFFF)
                 quiet_s = self.port.now_s()
-        self.events.extendleft(reversed(kept))
-        return b"".join(rows[i] for i in sorted(rows))
+        return rows
 
     # events
 
@@ -163,16 +184,17 @@ class Client:
 
     # inside
 
-    def _wait(self, ready, timeout_s: float) -> bool:  # type: ignore[no-untyped-def]
-        """Pump until ready() or the time is over."""
+    def _wait(self, ready: Callable[[], bool], timeout_s: float) -> bool:
+        """Pump until ready() or the time is over; looks once even when there is no time."""
         end_s = self.port.now_s() + timeout_s
+        left_s = timeout_s
         while not ready():
+            if self.info is not None and not self.greeting:
+                self.keep_alive()
+            self._pump(min(max(left_s, 0.0), BEAT_S))
             left_s = end_s - self.port.now_s()
             if left_s <= 0:
-                return False
-            if self.info is not None:
-                self.keep_alive()
-            self._pump(min(left_s, BEAT_S))
+                return ready()
         return True
 
     def _pump(self, timeout_s: float) -> None:
@@ -181,21 +203,31 @@ class Client:
         if not data:
             return
         for code, number, body in self.reader.feed(data):
-            self.up_frame = number
             self.since_beat += 1
-            self._sort(unpack_up(code, body))
+            message = unpack_up(code, body)
+            self._sort(message, isinstance(message, BoardInfo) or self._count(number))
         if self.reader.text:
-            text = self.reader.take_text().decode("utf-8", "replace")
+            text = self.decoder.decode(self.reader.take_text())
             self.text_tail = (self.text_tail + text)[-2000:]
             self.events.append(Text(text))
         half = 32 if self.info is not None and self.info.capabilities & messages.CAN_VIRTUAL else 2
-        if self.since_beat >= half and self.info is not None:
+        if self.since_beat >= half and self.info is not None and not self.greeting:
             self._beat()
 
-    def _sort(self, message: Event | BoardInfo | Reply | None) -> None:
-        """Replies and hellos are ours; journal entries are taken in order and once."""
-        if isinstance(message, Sample | Beat | Recorded):
-            self.events.append(message)
+    def _count(self, number: int) -> bool:
+        """Follow the up frames' numbers; whether this one is new."""
+        ahead = (number - self.up_frame) & 0xFF
+        if ahead == 0 or ahead > _OLD:
+            return False
+        self.lost_frames += ahead - 1
+        self.up_frame = number
+        return True
+
+    def _sort(self, message: Event | BoardInfo | Reply | None, new: bool) -> None:
+        """Replies and hellos are ours; journal entries are taken in order, everything once."""
+        if isinstance(message, (Sample, Beat, Recorded)):
+            if new and (self.recalling or not isinstance(message, Recorded)):
+                self.events.append(message)
         elif isinstance(message, Entry):
             if message.entry == self.seen_entry + 1:
                 self.seen_entry = message.entry
@@ -203,11 +235,26 @@ class Client:
         elif isinstance(message, Reply):
             self.reply = message
         elif isinstance(message, BoardInfo):
-            before = self.info
             self.hello_seen = message
-            self._forget(everything=before is None)
-            if before is not None and before.boot_nonce != message.boot_nonce:
-                self.events.append(Restarted(message))
+            if message.wire_version == messages.WIRE_VERSION:
+                self._adopt(message)
+
+    def _adopt(self, info: BoardInfo) -> None:
+        """A hello: numbers start anew, and what stands behind it belongs to this boot."""
+        before = self.info
+        self.info = info
+        self.up_frame = 0
+        if before is None:
+            self.lost_frames = 0
+        self._forget(everything=before is None)
+        oldest = info.oldest_entry - 1
+        if before is not None and before.boot_nonce == info.boot_nonce:
+            self.seen_entry = max(self.seen_entry, oldest)  # what it no longer holds never comes
+            return
+        self.saved_entry = oldest if before is not None else max(self.claimed, oldest)
+        self.seen_entry = self.saved_entry
+        if before is not None:
+            self.events.append(Restarted(info))
 
     def _forget(self, everything: bool) -> None:
         """What came before a hello is about another time: beats, or all that another host left."""
@@ -220,13 +267,14 @@ class Client:
         self.beat_at = self.port.now_s()
         self.since_beat = 0
 
-    def _silent(self, name: str) -> LinkTimeout:
-        said = self.text_tail.strip()[-200:]
+    def _silent(self, name: str, waited_s: float) -> LinkTimeout:
+        begun = bytes(self.reader.pending).decode("utf-8", "backslashreplace")
+        said = (self.text_tail + begun).strip()[-200:]
         return LinkTimeout(
             f"the board does not answer '{name}'",
             at=self.port.name,
             got=f"text instead: {said!r}" if said else "nothing",
-            bound=f"an answer within {TRIES * RESEND_S:.1f} s",
+            bound=f"an answer within {waited_s:.1f} s",
             try_="is Lodestroke's firmware on it, and no other program on the port? "
             "lodestroke flash RIG --port " + self.port.name,
         )

@@ -12,6 +12,7 @@ from .events import Beat, BoardInfo, Entry, Event, Recorded, Reply, Sample
 _UP = {code: (name, form, fields) for code, name, form, fields in messages.UP}
 _DOWN = {name: (code, form, fields) for code, name, form, fields in messages.DOWN}
 _SAMPLE = next(code for code, row in _UP.items() if row[0] == "sample")
+_HELLO = next(code for code, row in _UP.items() if row[0] == "hello")
 _SIZES = {code: struct.calcsize(row[1]) for code, row in _UP.items()}
 JOURNAL = ("cycle", "mark", "trip", "end", "gap")
 
@@ -37,8 +38,10 @@ def unpack_up(code: int, body: bytes) -> Event | BoardInfo | Reply | None:
     if code == _SAMPLE and len(body) == _SIZES[_SAMPLE]:
         return Sample(body)
     row = _UP.get(code)
-    if row is None or len(body) != _SIZES[code]:
+    if row is None:
         return None
+    if len(body) != _SIZES[code]:
+        return _foreign(body) if code == _HELLO and len(body) >= 4 else None
     name, form, names = row
     values = dict(zip(names, struct.unpack(form, body), strict=True))
     if name in JOURNAL:
@@ -51,3 +54,9 @@ def unpack_up(code: int, body: bytes) -> Event | BoardInfo | Reply | None:
     if name == "recorded":
         return Recorded(values["row"], body[2:])
     return Beat(state_name(values["state"]), values)
+
+
+def _foreign(body: bytes) -> BoardInfo:
+    """The hello of another version: only its first field, the version, stands for certain."""
+    (version,) = struct.unpack_from("<I", body)
+    return BoardInfo(version, b"", b"", b"", 0, 0, 1, "unknown", 0)
