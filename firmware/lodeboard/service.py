@@ -4,7 +4,7 @@ poll() does a bounded amount of work and allocates nothing while the heap is loc
 written now stays for the next poll; a frame is never interleaved with another.
 """
 
-from struct import pack_into, unpack_from
+from struct import calcsize, pack_into, unpack_from
 
 from . import states
 from .clock import us_since
@@ -36,6 +36,7 @@ _RECALL = const(0x4D)
 _MAINTAIN = const(0x4E)
 _RESET = const(0x4F)
 _SIMPLE = {code: name for code, name, _, fields in messages.DOWN if not fields}
+_SIZES = bytes(calcsize(form) for _, _, form, _ in messages.DOWN)     # codes run on from hello's
 _BODY = 2                          # a down frame's body starts behind type and number
 
 
@@ -82,10 +83,10 @@ class Service:
                 break
             n = self.reader.feed(octet)
             if n:
-                self._dispatch()
-        if self.reader.interrupt:
-            self.reader.interrupt = False
-            self.board.interrupt()
+                self._dispatch(n - _BODY)
+            elif self.reader.interrupt:
+                self.reader.interrupt = False
+                self.board.interrupt()
         for _ in range(_FRAMES):
             if not self._send_one():
                 break
@@ -98,17 +99,20 @@ class Service:
 
     # down
 
-    def _dispatch(self) -> None:
-        """One whole down frame stands in the reader's buffer."""
+    def _dispatch(self, length: int) -> None:
+        """One whole down frame stands in the reader's buffer, its body `length` octets long."""
         buf = self.reader.buf
         code = buf[0]
         number = buf[1]
         self.board.heard()
-        if code == _BEAT:
-            self._take_beat(buf)
-            return
         if code == _HELLO:
-            self._take_hello(buf)
+            self._take_hello()         # whatever its length: another version must learn of ours
+            return
+        at = code - _HELLO
+        fits = 0 < at < len(_SIZES) and length == _SIZES[at]
+        if code == _BEAT:
+            if fits and self.talking:  # before our hello it speaks of another boot's journal
+                self._take_beat(buf)
             return
         if number == self.last_down:
             self.reply_due = True          # our reply was lost: say it again, do not act again
@@ -116,10 +120,10 @@ class Service:
         self.last_down = number
         self.reply_command = code
         self.reply_detail = 0
-        self.reply_result = self._act(code, buf)
+        self.reply_result = self._act(code, buf) if fits else messages.UNKNOWN_COMMAND
         self.reply_due = True
 
-    def _take_hello(self, buf: bytearray) -> None:
+    def _take_hello(self) -> None:
         """A host introduces itself: numbering starts anew, unsaved entries are sent again."""
         now_us = self.hal.now_us()
         self.number = 0

@@ -55,12 +55,14 @@ class DownReader:
 
     feed() returns the length of type, number and body in `buf` when a whole frame has arrived,
     otherwise 0. A control octet inside a frame means that the frame is lost: it is dropped, and a
-    0x03 outside any frame sets `interrupt`.
+    0x03 outside any frame sets `interrupt`. Right behind an opening flag it is damage too: one
+    flipped bit makes a 0x03 of a command's code.
     """
 
     def __init__(self) -> None:
         self.buf = bytearray(_DOWN_MAX)
         self.n = 0
+        self.opened = False                   # the last octet was an opening flag
         self.escaped = False
         self.damaged = 0
         self.interrupt = False
@@ -71,6 +73,7 @@ class DownReader:
             n = self.n
             whole = not self.escaped
             self.n = 0
+            self.opened = n == 0
             self.escaped = False
             if n >= 6 and n <= _DOWN_MAX and whole and crc.holds(self.buf, 0, n - 4):
                 return n - 4
@@ -78,11 +81,12 @@ class DownReader:
                 self.damaged = (self.damaged + 1) & 0xFFFF
             return 0
         if octet < 0x20:
-            if octet == _CTRL_C and self.n == 0:
+            if octet == _CTRL_C and self.n == 0 and not self.opened:
                 self.interrupt = True
-            elif self.n:
+            elif self.n or self.opened:
                 self.damaged = (self.damaged + 1) & 0xFFFF
             self.n = 0
+            self.opened = False
             self.escaped = False
             return 0
         if octet == ESCAPE:
@@ -91,6 +95,7 @@ class DownReader:
         if self.escaped:
             self.escaped = False
             octet ^= _FLIP
+        self.opened = False
         if self.n < _DOWN_MAX:
             self.buf[self.n] = octet
         if self.n <= _DOWN_MAX:
