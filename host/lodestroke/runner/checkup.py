@@ -12,7 +12,7 @@ from . import session
 from .collect import Collector, Memory, fetch_recorder
 
 if TYPE_CHECKING:
-    from .endure import Bench
+    from .bench import Bench
 
 
 def due_items(bench: Bench) -> list[str]:
