@@ -1,4 +1,4 @@
-"""Both ends of the link over a pipe that loses, doubles, damages and delays bytes.
+"""Both ends of the link over a pipe that loses, doubles, damages and cuts what goes through it.
 
 The board is the real Board, Loop and Service on a fake Hal; the host is the real Client. Time is
 simulated: reading the port runs the board, as on the twin.
@@ -6,6 +6,7 @@ simulated: reading the port runs the board, as on the twin.
 
 from __future__ import annotations
 
+import itertools
 import random
 import struct
 import sys
@@ -31,18 +32,30 @@ ROWS = [(program.LOOP, 0, 0, 0, 0, 12), (program.CYCLE, 0, 0, 0, 0, 0),
 
 
 class NoisyPort:
-    """A Port to a bench; each byte is at the mercy of a seeded dice, each way."""
+    """A Port to a bench; each byte, and each piece that is written, is at the mercy of a seeded dice.
+
+    `piece` is the chance that a whole piece is cut short, comes twice or comes with text before it.
+    """
 
     name = "noisy"
 
-    def __init__(self, bench: Bench, seed: int, lose: float, flip: float, double: float) -> None:
+    def __init__(self, bench: Bench, seed: int, lose: float, flip: float, double: float,
+                 piece: float = 0.0) -> None:
         self.bench = bench
         self.dice = random.Random(seed)
         self.rates = (lose, flip, double)
+        self.piece = piece
         self.ticks = 0
 
     def _spoil(self, data: bytes) -> bytes:
         lose, flip, double = self.rates
+        luck = self.dice.random() / self.piece if self.piece else 9.0
+        if luck < 0.4:
+            data = data[: self.dice.randrange(len(data) + 1)]
+        elif luck < 0.8:
+            data += data
+        elif luck < 1.0:
+            data = b"\xa5 text \xa5" + data
         out = bytearray()
         for octet in data:
             luck = self.dice.random()
@@ -76,19 +89,22 @@ class NoisyPort:
 
 
 @settings(max_examples=25, deadline=None)
-@given(seed=st.integers(0, 1 << 30), lose=st.floats(0, 0.004), flip=st.floats(0, 0.004),
-       double=st.floats(0, 0.002))
-def test_noisy_link_delivers_every_journal_entry_once_and_in_order(seed, lose, flip, double):
+@given(seed=st.integers(0, 1 << 30), lose=st.floats(0, 0.002), flip=st.floats(0, 0.002),
+       double=st.floats(0, 0.001), piece=st.floats(0, 0.05))
+def test_noisy_link_delivers_every_journal_entry_once_and_in_order(seed, lose, flip, double, piece):
     bench = Bench(ROWS)
-    port = NoisyPort(bench, seed, lose, flip, double)
+    port = NoisyPort(bench, seed, lose, flip, double, piece)
     client = Client(port)
     client.hello()
     client.command("stream", every_ticks=10)
     client.command("arm", fingerprint=bench.fingerprint, program_crc32=bench.board.program.blob.crc32)
     client.command("go", run_token=5, cycles_before=0, last_cycle=0)
     entries: list[Entry] = []
+    ticks = [-1]
     while port.now_s() < 60:
         event = client.poll(0.1)
+        if isinstance(event, Sample):
+            ticks.append(int.from_bytes(event.body[:4], "little"))
         if isinstance(event, Entry):
             entries.append(event)
             client.saved(event.entry)
@@ -97,6 +113,35 @@ def test_noisy_link_delivers_every_journal_entry_once_and_in_order(seed, lose, f
     assert [entry.entry for entry in entries] == list(range(1, len(entries) + 1))
     assert [e.fields["cycle"] for e in entries if e.kind == "cycle"] == list(range(1, 13))
     assert entries[-1].kind == "end"
+    assert all(later > earlier for earlier, later in itertools.pairwise(ticks))
+    assert all(tick % 10 == 0 for tick in ticks[1:])
+
+
+@settings(max_examples=25, deadline=None)
+@given(seed=st.integers(0, 1 << 30), rate=st.floats(0, 0.003),
+       kills=st.lists(st.floats(0.05, 2.0), min_size=1, max_size=6))
+def test_host_killed_at_any_moment_resumes_with_no_entry_lost_or_doubled(seed, rate, kills):
+    bench = Bench(ROWS)
+    port = NoisyPort(bench, seed, rate, rate, rate, rate * 10)
+    disk: list[Entry] = []
+    begun = False
+    for length_s in [*kills, 30.0]:
+        client = Client(port)                  # a new process: it knows what is on disk and no more
+        client.hello(disk[-1].entry if disk else None)
+        if not begun:
+            client.command("arm", fingerprint=bench.fingerprint,
+                           program_crc32=bench.board.program.blob.crc32)
+            client.command("go", run_token=5, cycles_before=0, last_cycle=0)
+            begun = True
+        end_s = port.now_s() + length_s
+        while port.now_s() < end_s and not (disk and disk[-1].kind == "end"):
+            event = client.poll(0.05)
+            if isinstance(event, Entry):
+                disk.append(event)
+                if port.dice.random() < 0.5:   # half of what is on disk is not acknowledged yet
+                    client.saved(event.entry)
+    assert [entry.entry for entry in disk] == list(range(1, 14))
+    assert disk[-1].kind == "end"
 
 
 @settings(max_examples=25, deadline=None)
@@ -106,7 +151,7 @@ def test_noisy_link_makes_every_command_act_exactly_once(seed, rate):
     acted = []
     original = bench.board.simple
     bench.board.simple = lambda name: acted.append(name) or original(name)  # type: ignore[method-assign]
-    client = Client(NoisyPort(bench, seed, rate, rate, rate / 2))
+    client = Client(NoisyPort(bench, seed, rate, rate, rate / 2, rate * 5))
     asked = []
     try:
         client.hello()
