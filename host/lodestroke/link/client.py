@@ -168,8 +168,11 @@ class Client:
         return self.events.popleft() if self.events else None
 
     def saved(self, entry: int) -> None:
-        """Everything up to this journal entry is on disk: the board may forget it."""
-        if entry > self.saved_entry:
+        """Everything up to this journal entry is on disk: the board may forget it.
+
+        An entry that this boot of the board has not sent us is of another boot, and passed over.
+        """
+        if self.saved_entry < entry <= self.seen_entry:
             self.saved_entry = entry
             self._beat()
 

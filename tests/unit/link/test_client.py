@@ -82,6 +82,18 @@ def test_restarted_board_is_told_and_its_entries_count_from_one_again():
     assert all(saved == 0 for _, saved in port.beats()[before:])
 
 
+def test_disk_of_an_earlier_boot_says_nothing_about_this_one():
+    client, port = greeted(boot_nonce=1)
+    port.coming += b"".join(cycle(k, k) for k in range(1, 6))
+    take(client)
+    port.answer = partial(polite, boot_nonce=2, behind_hello=cycle(1, 1))
+    client.hello(client.saved_entry)
+    client.saved(5)                            # written before the restart was noticed
+    assert all(saved == 0 for _, saved in port.beats())
+    client.saved(1)
+    assert port.beats()[-1][1] == 1
+
+
 def test_no_beat_speaks_of_the_disk_while_nobody_knows_who_is_there():
     client, port = greeted()
     port.coming += cycle(1, 1)
