@@ -92,6 +92,8 @@ class Board:
         """Check everything that must be right before current may flow, then lock the heap."""
         if "arm" not in states.NEXT[self.state]:
             return messages.WRONG_STATE
+        if not self.journal.room():
+            return messages.BUSY         # a trip and an end must always find a cell
         if not self.limits.whole():
             return messages.NO_LIMITS
         if not self.program.whole() or self.program.blob.crc32 != program_crc32:

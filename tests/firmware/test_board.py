@@ -93,6 +93,21 @@ def test_arming_needs_limits_program_fingerprint_inputs_and_plausible_sensors():
     assert bench.arm() == messages.OK
 
 
+def test_a_board_whose_journal_nobody_saves_is_not_armed_again():
+    rows = [(program.SEG, 0, 0, 0, 0, 5), (program.END, 0, 1, 0, 0, 0)]
+    bench = Bench(rows)
+    ends = 0
+    while bench.arm() == messages.OK:
+        assert bench.board.go(5, 0, 0) == messages.OK
+        bench.ticks(300)
+        ends += 1
+        assert ends < 100
+    assert bench.arm() == messages.BUSY
+    assert [fields["entry"] for _, fields in journal(bench)] == list(range(1, ends + 1))
+    bench.board.journal.keep_until(ends)
+    assert bench.arm() == messages.OK
+
+
 def test_arming_without_a_deadman_is_refused_where_the_rig_needs_one():
     bench = Bench(changes={"deadman_needed": 1})
     bench.hal.capabilities = 0

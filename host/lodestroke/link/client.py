@@ -301,5 +301,6 @@ _ADVICE = {
     messages.STOP_IS_ACTIVE: "release the stop input",
     messages.NOT_PLAUSIBLE: "look at the pressure and current sensors' wiring",
     messages.NO_DEADMAN: "this port has no hard timer; see deadman in the rig file",
+    messages.BUSY: "it is still at work, or holds entries that nobody saved: wait, then try again",
     messages.OTHER_TRIP: "name the trip that is latched now",
 }
