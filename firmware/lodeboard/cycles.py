@@ -30,9 +30,11 @@ class Cycles:
         self.ticks = 0
         self.chamber_max_pa = -_FAR
         self.chamber_min_pa = _FAR
-        self.chamber_sum_pa = 0
+        self.chamber_mean_pa = 0
+        self.chamber_rest = 0
         self.outlet_max_pa = -_FAR
-        self.outlet_sum_pa = 0
+        self.outlet_mean_pa = 0
+        self.outlet_rest = 0
         self.outlet_reverse_pa = -_FAR
         self.inlet_reverse_pa = -_FAR
         self.held_ticks = 0
@@ -46,9 +48,21 @@ class Cycles:
     def step(self, chamber_pa: int, outlet_pa: int, outlet_reverse_pa: int, inlet_reverse_pa: int,
              current_ma: int, held: bool) -> None:
         """Account one tick of an open cycle."""
-        self.ticks += 1
-        self.chamber_sum_pa += chamber_pa
-        self.outlet_sum_pa += outlet_pa
+        n = self.ticks + 1
+        self.ticks = n
+        # a sum over minutes would leave the small integers: keep sum = mean * n + rest, 0 <= rest < n
+        rest = self.chamber_rest + chamber_pa - self.chamber_mean_pa
+        if rest < 0 or rest >= n:
+            more = rest // n
+            self.chamber_mean_pa += more
+            rest -= more * n
+        self.chamber_rest = rest
+        rest = self.outlet_rest + outlet_pa - self.outlet_mean_pa
+        if rest < 0 or rest >= n:
+            more = rest // n
+            self.outlet_mean_pa += more
+            rest -= more * n
+        self.outlet_rest = rest
         if chamber_pa > self.chamber_max_pa:
             self.chamber_max_pa = chamber_pa
         if chamber_pa < self.chamber_min_pa:
@@ -78,9 +92,8 @@ class Cycles:
         if journal.lost_first or not journal.room():
             journal.lose(self.number)
             return
-        n = self.ticks if self.ticks else 1
         at = journal.open(_CYCLE, _CYCLE_BYTES)
         pack_into(_CYCLE_FORMAT, journal.rows, at, journal.newest, self.number, self.tick,
-                  self.ticks, self.chamber_max_pa, self.chamber_min_pa, self.chamber_sum_pa // n,
-                  self.outlet_max_pa, self.outlet_sum_pa // n, self.outlet_reverse_pa,
+                  self.ticks, self.chamber_max_pa, self.chamber_min_pa, self.chamber_mean_pa,
+                  self.outlet_max_pa, self.outlet_mean_pa, self.outlet_reverse_pa,
                   self.inlet_reverse_pa, self.held_ticks, self.peak_ma, winding_cc, step)
