@@ -65,6 +65,15 @@ LOWER_BOUNDS = (
 )
 
 
+# What a schedule step may tighten lies between these two.
+FIRST_STEP_LIMIT = INDEX["outlet_reverse_soft_pa"]
+LAST_STEP_LIMIT = INDEX["hot_hard_mc"]
+_SMALL = const(0x3FFFFFFF)
+_SHIFTS = tuple([INDEX[name + "_shift"] for name in CHANNELS])
+_TICK_US = INDEX["tick_us"]
+_RAMP_MA = INDEX["ramp_ma"]
+
+
 class Blob:
     """Bytes that arrive in parts and count only once sealed with their length, CRC and fingerprint."""
 
@@ -100,7 +109,8 @@ class Limits:
     """The rig's limits as sent, the copy in force, and a complement that shows corruption.
 
     A schedule step may tighten a limit in `active`; `values` stays what the host sent. One word a
-    tick is compared with its complement, so a flipped bit is found within a lap of N_FIELDS ticks.
+    tick is compared with its complement, and the one in force must not be looser: whatever memory
+    does is found within a lap of N_FIELDS ticks.
     """
 
     def __init__(self) -> None:
@@ -120,6 +130,9 @@ class Limits:
             self.values[i] = value
             self.active[i] = value
             self.shadow[i] = ~value
+        if not _can_run(self.values):
+            return False
+        self.at = 0
         blob.crc32 = crc32
         blob.fingerprint = fingerprint
         blob.sealed = True
@@ -139,14 +152,41 @@ class Limits:
         return self.active[INDEX[name]]
 
     def relax(self) -> None:
-        """Every limit back to the rig's."""
+        """Every limit that a step may have tightened back to the rig's."""
         values = self.values
         active = self.active
-        for i in range(N_FIELDS):
+        for i in range(FIRST_STEP_LIMIT, LAST_STEP_LIMIT + 1):
             active[i] = values[i]
 
+    def tighten(self, field: int, value: int) -> None:
+        """Put a step's limit in force; one looser than what is in force already is ignored."""
+        if field in LOWER_BOUNDS:
+            if value > self.active[field]:
+                self.active[field] = value
+        elif value < self.active[field]:
+            self.active[field] = value
+
     def patrol(self) -> bool:
-        """Compare one more word with its complement; False when they disagree."""
+        """Look at one more word; False, and `at` stays on it, when it is not what was sealed."""
         i = self.at
+        value = self.values[i]
+        if value ^ self.shadow[i] != -1:
+            return False
+        if i in LOWER_BOUNDS:
+            if self.active[i] < value:
+                return False
+        elif self.active[i] > value:
+            return False
         self.at = i + 1 if i + 1 < N_FIELDS else 0
-        return self.values[i] ^ self.shadow[i] == -1
+        return True
+
+
+def _can_run(values: "array[int]") -> bool:
+    """Whether a board could run on these: small integers, a period, a ramp that ends."""
+    for value in values:
+        if value < -_SMALL or value > _SMALL:
+            return False
+    for at in _SHIFTS:
+        if values[at] < 0 or values[at] > 29:
+            return False
+    return 100 <= values[_TICK_US] <= 100000 and values[_RAMP_MA] > 0

@@ -8,7 +8,7 @@ import struct
 from array import array
 
 from .compat import const
-from .limits import FIELDS, LOWER_BOUNDS, Blob, Limits
+from .limits import FIRST_STEP_LIMIT, INDEX, LAST_STEP_LIMIT, Blob, Limits
 
 RECORD_FORMAT = "<BBHhhi"
 RECORD_BYTES = const(12)
@@ -28,6 +28,7 @@ MARK = const(6)               # journal a mark numbered n (0 to 65535)
 LIMIT = const(7)              # tighten limit field `arg` to n until RELAX
 RELAX = const(8)              # every tightened limit back to the rig's
 _LAST_OP = const(8)
+_TARGET_MAX = INDEX["target_max_ma"]
 
 # what Sequencer.step() found on its way to the tick's targets
 RUNS = const(0)
@@ -62,13 +63,33 @@ class Program:
                 return False
             self.op[i], self.arg[i], self.step[i], self.a_ma[i], self.b_ma[i], self.n[i] = row
             self.shadow[i] = self._fold(i)
-        if self.op[self.count - 1] != END:
+        if self.op[self.count - 1] != END or not self._loops_match():
             return False
         blob.crc32 = crc32
         blob.fingerprint = fingerprint
         blob.sealed = True
         self.at = 0
         return True
+
+    def _loops_match(self) -> bool:
+        """Every LOOP has its NEXT, none is too deep, and each turn of one takes time."""
+        starts = [0] * MAX_DEPTH
+        depth = 0
+        last_seg = -1
+        for i in range(self.count):
+            op = self.op[i]
+            if op == SEG:
+                last_seg = i
+            elif op == LOOP:
+                if depth == MAX_DEPTH:
+                    return False
+                starts[depth] = i
+                depth += 1
+            elif op == NEXT:
+                depth -= 1
+                if depth < 0 or last_seg < starts[depth]:
+                    return False
+        return depth == 0
 
     def whole(self) -> bool:
         """Sealed, and every record still what was sealed."""
@@ -85,10 +106,12 @@ class Program:
         return ~(word ^ (self.a_ma[i] << 4) ^ (self.b_ma[i] << 8) ^ self.n[i])
 
     def patrol(self) -> bool:
-        """Check one more record against its complement; False when they disagree."""
+        """Look at one more record; False, and `at` stays on it, when it is not what was sealed."""
         i = self.at
+        if self.shadow[i] != self._fold(i):
+            return False
         self.at = i + 1 if i + 1 < self.count else 0
-        return self.shadow[i] == self._fold(i)
+        return True
 
 
 def _lawful(row: "tuple[int, ...]") -> bool:
@@ -99,7 +122,9 @@ def _lawful(row: "tuple[int, ...]") -> bool:
     if op == SEG or op == LOOP:
         return 1 <= n <= MAX_TICKS
     if op == LIMIT:
-        return arg < len(FIELDS) and -MAX_TICKS <= n <= MAX_TICKS
+        if not FIRST_STEP_LIMIT <= arg <= LAST_STEP_LIMIT:
+            return False
+        return (0 if arg == _TARGET_MAX else -MAX_TICKS) <= n <= MAX_TICKS
     return 0 <= n <= 65535
 
 
@@ -201,21 +226,10 @@ class Sequencer:
         elif op == MARK:
             self.mark = self.program.n[i]
         elif op == LIMIT:
-            self._tighten(i)
+            self.limits.tighten(self.program.arg[i], self.program.n[i])
         elif op == RELAX:
             self.limits.relax()
         return True
-
-    def _tighten(self, i: int) -> None:
-        """Put a step's tighter limit in force; one that would be looser than the rig's is ignored."""
-        field = self.program.arg[i]
-        value = self.program.n[i]
-        rig_value = self.limits.values[field]
-        if field in LOWER_BOUNDS:
-            if value > rig_value:
-                self.limits.active[field] = value
-        elif value < rig_value:
-            self.limits.active[field] = value
 
 
 def _share(span_ma: int, k: int, n: int) -> int:

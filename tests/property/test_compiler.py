@@ -14,7 +14,7 @@ from hypothesis import HealthCheck, assume, given, settings
 from hypothesis import strategies as st
 
 from lodeboard import program as board
-from lodeboard.limits import Limits
+from lodeboard.limits import FIELDS, Limits
 from lodestroke.errors import ScheduleError
 from lodestroke.rig import Rig, limits_blob, load_rig
 from lodestroke.schedule import Program, Schedule, compile_program, load_schedule
@@ -221,7 +221,7 @@ def sequenced(program: Program) -> tuple[np.ndarray, list[int], list[tuple[int, 
     sequencer = board.Sequencer(store, limits)
     targets = np.zeros((program.ticks, 2), np.int64)
     cycles, seen, active = [], [], []
-    outlet_high = board.FIELDS.index("outlet_high_hard_pa")
+    outlet_high = FIELDS.index("outlet_high_hard_pa")
     for tick in range(program.ticks):
         sequencer.cycle_mark, sequencer.mark = 0, -1
         assert sequencer.step() == board.RUNS
