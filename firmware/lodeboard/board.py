@@ -38,7 +38,8 @@ class Board:
         self.sequencer = Sequencer(self.program, self.limits)
         self.sensors = Sensors(self.limits)
         self.interlocks = Interlocks(self.limits, self.sensors)
-        self.thermal = Coil()
+        self.thermal_a = Coil()
+        self.thermal_b = Coil()
         self.regulator_a = Regulator()
         self.regulator_b = Regulator()
         self.journal = Journal()
@@ -49,6 +50,7 @@ class Board:
         self.live = False            # samples are being taken: from GO to the end plus its tail
         self.tail_left = 0
         self.locked = False
+        self.stalled = False         # the loop shall not count the time since the last tick
         self.released = False        # the loop shall end and give the port back
         self.latch_dirty = False
         self.trip_code = trips.NONE
@@ -116,6 +118,7 @@ class Board:
         if not guarded and self.limits.get("deadman_needed"):
             return messages.NO_DEADMAN
         self.live = False
+        self.stalled = True          # proving the guards and collecting garbage took a while
         self.move("arm")
         collect()
         heap_lock()
@@ -126,15 +129,17 @@ class Board:
         """Every part takes its limits."""
         self.limits.relax()
         self.sensors.load()
-        self.thermal.load(self.limits)
+        self.thermal_a.load(self.limits)
+        self.thermal_b.load(self.limits)
         self.regulator_a.load(self.limits)
         self.regulator_b.load(self.limits)
-        self.interlocks.open_ticks = 0
-        self.interlocks.soft = False
+        self.interlocks.load()
         self.tick.load()
 
     def go(self, run_token: int, cycles_before: int, last_cycle: int) -> int:
         """Start the program from its first record; it ends early once last_cycle is complete."""
+        if last_cycle and last_cycle <= cycles_before and self.state == states.ARMED:
+            return messages.OUT_OF_BOUNDS
         if not self.move("go"):
             return messages.WRONG_STATE
         self.run_token = run_token
@@ -154,6 +159,8 @@ class Board:
             return messages.WRONG_STATE
         if name == "stop":
             self.end_why = messages.ENDED_STOPPED
+        elif name == "resume":
+            self.tick.fold_q8 = 0      # up again as after a fold-back: no step that nobody reckoned with
         return messages.OK
 
     def clear(self, code: int, serial: int) -> int:
@@ -188,7 +195,7 @@ class Board:
     def finish(self) -> None:
         """The program reached its end."""
         self.end_why = messages.ENDED_FINISHED
-        self.cycles.close(self.thermal.winding_mc // 10, self.sequencer.step_now)
+        self.cycles.close(self.tick.winding_mc // 10, self.sequencer.step_now)
         self.move("END")
         self.tick.ramping = True
 
@@ -214,7 +221,7 @@ class Board:
         if not self.tick.ramping:
             self.tick.off()
         self.move("TRIP")
-        self.journal.own_up()
+        self.journal.own_up(0)
         at = self.journal.open(0x92, _TRIP_BYTES)
         tick = self.samples.written if was_live else 0
         pack_into(_TRIP_FORMAT, self.trip_body, 0, self.journal.newest, self.trip_serial, code,
@@ -230,6 +237,7 @@ class Board:
             return
         self.cycles.is_open = False
         self.tail_left = self.limits.get("tail_ticks")
+        self.journal.own_up(0)
         at = self.journal.open(0x93, _END_BYTES)
         pack_into(_END_FORMAT, self.journal.rows, at, self.journal.newest, self.samples.written,
                   self.cycles.number, why, self.run_token)

@@ -2,6 +2,9 @@
 
 A hard level trips in the tick whose samples reached it. A soft level holds the stroke back: while
 any is reached the current target folds back towards fold_min_q8. judge() allocates nothing.
+
+Causes of category 0 come before those of category 1 (trips.TABLE): a ramp that a hot coil asks for
+must never hide what has to drop enable at once.
 """
 
 from . import trips
@@ -19,8 +22,8 @@ RULES = (
     (trips.CHAMBER_LOW, "chamber", "chamber_low_soft_pa", "chamber_low_hard_pa"),
     (trips.OUTLET_HIGH, "outlet", "outlet_high_soft_pa", "outlet_high_hard_pa"),
     (trips.OUTLET_LOW, "outlet", "", "outlet_low_hard_pa"),
-    (trips.COIL_HOT, "winding temperature by estimate", "hot_soft_mc", "hot_hard_mc"),
-    (trips.COIL_OPEN, "current far below target", "", "coil_open_ticks"),
+    (trips.COIL_OPEN, "either coil's current below half its target", "", "coil_open_ticks"),
+    (trips.COIL_HOT, "either winding's temperature by estimate", "hot_soft_mc", "hot_hard_mc"),
     (trips.SUPPLY_LOW, "supply, where it is measured", "", "supply_low_mv"),
 )
 
@@ -50,29 +53,41 @@ class Interlocks:
         self.limits = limits
         self.sensors = sensors
         self.soft = False
-        self.open_ticks = 0
+        self.slow = 0                # a category 1 cause that judge() found, or 0
+        self.open_ticks_a = 0
+        self.open_ticks_b = 0
         self.channel = 0
         self.value = 0
         self.limit = 0
         self.outlet_reverse_pa = 0
         self.inlet_reverse_pa = 0
 
-    def judge(self, winding_mc: int, target_a_ma: int) -> int:
-        """A trip code or 0; sets `soft`, and for a trip channel, value and limit."""
+    def load(self) -> None:
+        """ARM: nothing counted yet."""
+        self.soft = False
+        self.slow = 0
+        self.open_ticks_a = 0
+        self.open_ticks_b = 0
+
+    def judge(self, winding_a_mc: int, winding_b_mc: int, target_a_ma: int, target_b_ma: int) -> int:
+        """A category 0 trip code or 0; `slow` is then a category 1 code or 0. Sets `soft`, and for
+        either code channel, value and limit. Targets are those of the tick before.
+        """
         v = self.limits.active
         x = self.sensors.values
         chamber_pa = x[CHAMBER]
         outlet_pa = x[OUTLET]
-        current_ma = x[COIL_A]
+        a_ma = x[COIL_A]
+        b_ma = x[COIL_B]
         outlet_reverse_pa = outlet_pa - chamber_pa
         inlet_reverse_pa = chamber_pa - x[INLET]
         self.outlet_reverse_pa = outlet_reverse_pa
         self.inlet_reverse_pa = inlet_reverse_pa
         over_ma = v[_OVER_CURRENT]
-        if current_ma >= over_ma or -current_ma >= over_ma:
-            return self._fires(trips.OVER_CURRENT, COIL_A, current_ma, over_ma)
-        if x[COIL_B] >= over_ma or -x[COIL_B] >= over_ma:
-            return self._fires(trips.OVER_CURRENT, COIL_B, x[COIL_B], over_ma)
+        if a_ma >= over_ma or -a_ma >= over_ma:
+            return self._fires(trips.OVER_CURRENT, COIL_A, a_ma, over_ma)
+        if b_ma >= over_ma or -b_ma >= over_ma:
+            return self._fires(trips.OVER_CURRENT, COIL_B, b_ma, over_ma)
         # hard before soft, each on its own: a schedule step may tighten the one below the other
         if outlet_reverse_pa >= v[_OUTLET_REVERSE_HARD]:
             return self._fires(
@@ -88,24 +103,46 @@ class Interlocks:
             return self._fires(trips.OUTLET_HIGH, OUTLET, outlet_pa, v[_OUTLET_HIGH_HARD])
         if outlet_pa <= v[_OUTLET_LOW_HARD]:
             return self._fires(trips.OUTLET_LOW, OUTLET, outlet_pa, v[_OUTLET_LOW_HARD])
-        if winding_mc >= v[_HOT_HARD]:
-            return self._fires(trips.COIL_HOT, COIL_A, winding_mc, v[_HOT_HARD])
         self.soft = (
             outlet_reverse_pa >= v[_OUTLET_REVERSE_SOFT]
             or inlet_reverse_pa >= v[_INLET_REVERSE_SOFT]
             or chamber_pa >= v[_CHAMBER_HIGH_SOFT]
             or chamber_pa <= v[_CHAMBER_LOW_SOFT]
             or outlet_pa >= v[_OUTLET_HIGH_SOFT]
-            or winding_mc >= v[_HOT_SOFT]
+            or winding_a_mc >= v[_HOT_SOFT]
+            or winding_b_mc >= v[_HOT_SOFT]
         )
-        if target_a_ma >= v[_COIL_OPEN_MA] and current_ma + current_ma < target_a_ma:
-            self.open_ticks += 1
-            if self.open_ticks >= v[_COIL_OPEN_TICKS]:
-                return self._fires(trips.COIL_OPEN, COIL_A, current_ma, target_a_ma)
+        return self._judge_coils(winding_a_mc, winding_b_mc, target_a_ma, target_b_ma)
+
+    def _judge_coils(self, winding_a_mc: int, winding_b_mc: int,
+                     target_a_ma: int, target_b_ma: int) -> int:
+        """Coils that carry too little or are too hot, and their supply; as judge()."""
+        v = self.limits.active
+        x = self.sensors.values
+        a_ma = x[COIL_A]
+        b_ma = x[COIL_B]
+        open_ma = v[_COIL_OPEN_MA]
+        if target_a_ma >= open_ma and a_ma + a_ma < target_a_ma \
+                or -target_a_ma >= open_ma and a_ma + a_ma > target_a_ma:
+            self.open_ticks_a += 1
+            if self.open_ticks_a >= v[_COIL_OPEN_TICKS]:
+                return self._fires(trips.COIL_OPEN, COIL_A, a_ma, target_a_ma)
         else:
-            self.open_ticks = 0
-        if x[SUPPLY] <= v[_SUPPLY_LOW]:
-            return self._fires(trips.SUPPLY_LOW, SUPPLY, x[SUPPLY], v[_SUPPLY_LOW])
+            self.open_ticks_a = 0
+        if target_b_ma >= open_ma and b_ma + b_ma < target_b_ma \
+                or -target_b_ma >= open_ma and b_ma + b_ma > target_b_ma:
+            self.open_ticks_b += 1
+            if self.open_ticks_b >= v[_COIL_OPEN_TICKS]:
+                return self._fires(trips.COIL_OPEN, COIL_B, b_ma, target_b_ma)
+        else:
+            self.open_ticks_b = 0
+        self.slow = 0
+        if winding_a_mc >= v[_HOT_HARD]:
+            self.slow = self._fires(trips.COIL_HOT, COIL_A, winding_a_mc, v[_HOT_HARD])
+        elif winding_b_mc >= v[_HOT_HARD]:
+            self.slow = self._fires(trips.COIL_HOT, COIL_B, winding_b_mc, v[_HOT_HARD])
+        elif x[SUPPLY] <= v[_SUPPLY_LOW]:
+            self.slow = self._fires(trips.SUPPLY_LOW, SUPPLY, x[SUPPLY], v[_SUPPLY_LOW])
         return 0
 
     def _fires(self, code: int, channel: int, value: int, limit: int) -> int:

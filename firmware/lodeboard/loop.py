@@ -28,6 +28,9 @@ class Loop:
         board = self.board
         period_us = self.period_us
         now_us = hal.now_us()
+        if board.stalled:
+            board.stalled = False
+            self.due_us = now_us
         late_us = us_since(now_us, self.due_us)
         if late_us < 0:
             late_us = 0

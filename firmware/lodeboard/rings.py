@@ -108,9 +108,9 @@ class Journal:
             self.lost_first = cycle
         self.lost_last = cycle
 
-    def own_up(self) -> None:
-        """Journal the gap as soon as there is room."""
-        if self.lost_first and self.room():
+    def own_up(self, reserve: int = _RESERVE) -> None:
+        """Journal the gap as soon as there is room; reserve 0 at a run's end, which keeps a cell for it."""
+        if self.lost_first and self.room(reserve):
             at = self.open(0x94, 12)
             pack_into("<III", self.rows, at, self.newest, self.lost_first, self.lost_last)
             self.lost_first = 0

@@ -18,6 +18,8 @@ _FOLD_FALL = INDEX["fold_fall_q8"]
 _FOLD_RISE = INDEX["fold_rise_q8"]
 _RAMP = INDEX["ramp_ma"]
 _LATE = INDEX["late_us"]
+_SILENCE = INDEX["silence_ms"]
+_TICK_US = INDEX["tick_us"]
 
 
 class Tick:
@@ -31,7 +33,8 @@ class Tick:
         self.sequencer = board.sequencer
         self.sensors = board.sensors
         self.interlocks = board.interlocks
-        self.thermal = board.thermal
+        self.thermal_a = board.thermal_a
+        self.thermal_b = board.thermal_b
         self.regulator_a = board.regulator_a
         self.regulator_b = board.regulator_b
         self.cycles = board.cycles
@@ -43,11 +46,15 @@ class Tick:
         self.ramping = False         # a category 1 stop is on its way down
         self.silent_ticks = 0
         self.silence_ticks = 0
+        self.two_coils = False
+        self.winding_mc = 0          # the hotter coil's
 
     def load(self) -> None:
         """ARM: take what the limits say."""
         limits = self.limits
         self.silence_ticks = limits.get("silence_ms") * 1000 // limits.get("tick_us")
+        self.two_coils = limits.get("coil_b_present") != 0
+        self.winding_mc = self.thermal_a.winding_mc
         self.fold_q8 = 256
         self.target_a_ma = 0
         self.target_b_ma = 0
@@ -68,11 +75,13 @@ class Tick:
         self._account()
 
     def _judge(self, code: int, late_us: int) -> None:
-        """Anything wrong, in the order of first-out; only while armed or still ramping down."""
+        """Anything wrong, in the order of first-out; only while armed or still ramping down.
+
+        Category 0 before category 1: what asks for a ramp must not hide what drops enable.
+        """
         board = self.board
-        state = board.state
-        self.thermal.step(self.sensors.values[COIL_A])
-        if not self.ramping and state not in states.ENERGISED:
+        self._estimate()
+        if not self.ramping and board.state not in states.ENERGISED:
             return
         self.silent_ticks += 1
         if code:
@@ -80,7 +89,8 @@ class Tick:
             board.trip(code, watch.channel, watch.value, watch.limit)
             return
         locks = self.interlocks
-        code = locks.judge(self.thermal.winding_mc, self.regulator_a.target_ma)
+        code = locks.judge(self.thermal_a.winding_mc, self.thermal_b.winding_mc,
+                           self.regulator_a.target_ma, self.regulator_b.target_ma)
         if code:
             board.trip(code, locks.channel, locks.value, locks.limit)
             return
@@ -93,10 +103,24 @@ class Tick:
             board.trip(trips.PROGRAM_CORRUPT, 255, self.program.at, 0)
         elif late_us >= self.limits.values[_LATE]:
             board.trip(trips.TICK_LATE, 255, late_us, self.limits.values[_LATE])
+        elif locks.slow:
+            board.trip(locks.slow, locks.channel, locks.value, locks.limit)
         elif inputs & 1:
             board.trip(trips.STOP_INPUT, 255, 1, 1)
         elif self.silent_ticks >= self.silence_ticks:
-            board.trip(trips.HOST_SILENT, 255, self.silent_ticks, self.silence_ticks)
+            v = self.limits.values
+            board.trip(trips.HOST_SILENT, 255, self.silent_ticks * v[_TICK_US] // 1000, v[_SILENCE])
+
+    def _estimate(self) -> None:
+        """Coil temperatures, from the measured currents; also while the coil is off."""
+        x = self.sensors.values
+        self.thermal_a.step(x[COIL_A])
+        winding_mc = self.thermal_a.winding_mc
+        if self.two_coils:
+            self.thermal_b.step(x[COIL_B])
+            if self.thermal_b.winding_mc > winding_mc:
+                winding_mc = self.thermal_b.winding_mc
+        self.winding_mc = winding_mc
 
     def _sequence(self) -> None:
         """The program's targets for this tick, folded back where a soft level holds the stroke."""
@@ -114,12 +138,13 @@ class Tick:
             else:
                 self.board.trip(trips.PROGRAM_CORRUPT, 255, sequencer.pc, 0)
             return
-        v = self.limits.active
+        v = self.limits.values
         fold_q8 = self.fold_q8
         if self.interlocks.soft:
-            fold_q8 -= v[_FOLD_FALL]
-            if fold_q8 < v[_FOLD_MIN]:
-                fold_q8 = v[_FOLD_MIN]
+            if fold_q8 > v[_FOLD_MIN]:     # below it only on the way up from a pause
+                fold_q8 -= v[_FOLD_FALL]
+                if fold_q8 < v[_FOLD_MIN]:
+                    fold_q8 = v[_FOLD_MIN]
         elif fold_q8 < 256:
             fold_q8 += v[_FOLD_RISE]
             if fold_q8 > 256:
@@ -130,7 +155,7 @@ class Tick:
         if fold_q8 < 256:
             a_ma = (a_ma * fold_q8) >> 8
             b_ma = (b_ma * fold_q8) >> 8
-        most_ma = v[_TARGET_MAX]
+        most_ma = self.limits.active[_TARGET_MAX]
         if a_ma > most_ma:
             a_ma = most_ma
         elif a_ma < -most_ma:
@@ -180,7 +205,7 @@ class Tick:
         sequencer = self.sequencer
         cycles = self.cycles
         state = board.state
-        winding_cc = self.thermal.winding_mc // 10
+        winding_cc = self.winding_mc // 10
         tick = self.samples.written
         if state == states.RUNNING:
             if sequencer.cycle_mark:

@@ -28,7 +28,7 @@ def judge(values: dict[str, int], winding_mc: int = 22000, target_ma: int = 0):
     for name, value in values.items():
         sensors.values[limits.CHANNELS.index(name)] = value
     locks = Interlocks(store, sensors)
-    return locks.judge(winding_mc, target_ma), locks
+    return locks.judge(winding_mc, 0, target_ma, 0) or locks.slow, locks
 
 
 # code, sensor values at `level` above (or below) what fires, further arguments; level in the limit's unit
@@ -77,7 +77,7 @@ def test_soft_level_holds_back_at_its_limit_and_not_one_unit_below(field, make, 
 
 def test_coil_open_needs_its_ticks():
     _, locks = judge({"outlet": 0}, target_ma=0)
-    verdicts = [locks.judge(22000, 1000) for _ in range(V["coil_open_ticks"])]
+    verdicts = [locks.judge(22000, 22000, 1000, 0) for _ in range(V["coil_open_ticks"])]
     assert verdicts[-1] == trips.COIL_OPEN
     assert set(verdicts[:-1]) == {0}
 

@@ -30,7 +30,7 @@ for k in range(3000):
     if k == 1200:
         hal.swing = 2500                                # soft level: fold-back at work
     loop.step()
-    note(board.tick.target_a_ma, board.regulator_a.duty_q15, board.thermal.winding_mc,
+    note(board.tick.target_a_ma, board.regulator_a.duty_q15, board.thermal_a.winding_mc,
          board.tick.fold_q8, board.state, board.cycles.number, board.interlocks.outlet_reverse_pa)
 for length in range(0, 57):
     buf = bytearray(70)
