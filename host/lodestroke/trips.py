@@ -101,7 +101,7 @@ WORDS = {
         "the host was silent for too long",
         "the bench computer stopped, slept or lost the cable",
         "look at computer and cable; endure --resume carries on",
-        "ticks",
+        "ms",
     ),
     trips.TICK_LATE: Words(
         "a control tick came too late",
