@@ -7,7 +7,7 @@ from typing import Any
 
 import click
 
-from ..errors import Exit, LodestrokeError
+from ..errors import Exit, LodestrokeError, ProofFailed
 from .common import Progress, emit_json, fail, json_option, open_log, say
 
 
@@ -29,6 +29,7 @@ from .common import Progress, emit_json, fail, json_option, open_log, say
     help="twin, or virtual: the real interpreter in lock-step.",
 )
 @click.option("--out", metavar="FOLDER", help="Write dry-run.json, samples.csv and a page there.")
+@click.option("--replay", metavar="FILE", help="A case of `prove`: its pump (not --seed), its faults.")
 @json_option
 @click.pass_context
 def command(
@@ -38,11 +39,13 @@ def command(
     seed: int,
     place: str,
     out: str | None,
+    replay: str | None,
     as_json: bool,
 ) -> None:
     """Run a schedule in simulated time and say what would happen.
 
-    Exit code 3 when an interlock trips. Logged only where --logbook names a logbook.
+    Exit code 3 when an interlock trips, 8 when a replayed case breaks an invariant. Logged only
+    where --logbook names a logbook.
     """
     from ..rig import load_rig
     from ..runner import dry_run
@@ -52,14 +55,16 @@ def command(
     try:
         loaded = load_rig(rig)
         plan = load_schedule(schedule)
+        faulty = _faults(replay, loaded) if replay else None
         bar = Progress(plan.title, compile_program(plan, loaded).cycles, "cycles")
         with StopFlag() as flag:
             try:
                 shown = dry_run(
                     loaded,
                     plan,
-                    seed=seed,
+                    seed=faulty.case.plant_seed if faulty else seed,
                     on=place,
+                    harness=faulty,
                     stop=lambda: "interrupted" if flag.raised else "",
                     progress=lambda outcome: bar.to(outcome.cycles_done),
                 )
@@ -71,10 +76,36 @@ def command(
     except LodestrokeError as error:
         fail(error, as_json)
     _tell(shown.result, as_json, files)
+    if faulty:
+        _judge(shown, faulty, loaded, replay or "")
     if shown.result["end"] == "interrupted":
         raise SystemExit(int(Exit.INTERRUPTED))
     if shown.result["trips"]:
         raise SystemExit(int(Exit.TRIPPED))
+
+
+def _faults(replay: str, rig: Any) -> Any:
+    from ..prove import Faulty, read_case
+
+    return Faulty(read_case(replay, rig), rig)
+
+
+def _judge(shown: Any, faulty: Any, rig: Any, replay: str) -> None:
+    """Hold the invariants against a replayed case; ends with PROOF_FAILED when one breaks."""
+    from ..prove import judge, trace_of
+
+    found = judge(trace_of(rig, shown, faulty))
+    for broken in found:
+        error = ProofFailed(
+            f"an invariant did not hold: {broken.invariant.replace('_', ' ')}",
+            at=f"{replay}, tick {broken.tick}",
+            got=broken.got,
+            bound=broken.bound,
+            try_="look at the samples: add --out FOLDER",
+        )
+        say(error.text())
+    if found:
+        raise SystemExit(int(Exit.PROOF_FAILED))
 
 
 def _log(ctx: click.Context, shown: Any, rig: Any, schedule: Any) -> None:

@@ -14,6 +14,7 @@ from .. import __version__
 COMMANDS = {
     "check": "Price a rig before power; with a schedule, its static proof.",
     "dry-run": "Run a schedule on the twin or the virtual board.",
+    "prove": "Vary the pump, inject faults, hold the invariants; shrink what fails.",
     "flash": "Build the firmware bundle and install it on a board.",
     "run": "Run a schedule on a board and log it.",
     "endure": "Run an endurance plan; resumable.",

@@ -46,6 +46,7 @@ class Memory:
         self.rows = bytearray()
         self.cycles: list[dict[str, int]] = []
         self.marks: list[dict[str, int]] = []
+        self.gaps: list[tuple[int, int]] = []
         self.entry = 0
 
     def cycle(self, fields: dict[str, int]) -> None:
@@ -70,7 +71,9 @@ class Memory:
         last: int | None = None,
         unnumbered_most: int = 0,
     ) -> None:
-        """Dry-runs lose nothing."""
+        """Only a dry-run whose host was cut off loses any."""
+        if first is not None and last is not None:
+            self.gaps.append((first, last))
 
     def note(self, text: str) -> None:
         """Text from a twin goes to the terminal by itself."""
@@ -95,6 +98,7 @@ class Outcome:
     trips: list[dict[str, int]] = field(default_factory=list)
     asked_to_stop: str = ""  # what made us stop it
     last_tick: int = -1
+    ends: list[dict[str, int]] = field(default_factory=list)  # one, unless something is wrong
 
 
 class Collector:
@@ -183,6 +187,7 @@ class Collector:
         else:
             self.sink.seen(event.entry)
             if fields["run_token"] == self.token:
+                self.outcome.ends.append(fields)
                 self.outcome.why = messages.ENDS[fields["why"]]
                 self.outcome.end_tick = fields["tick"]
                 self.ended_at = now_s

@@ -4,13 +4,13 @@ from __future__ import annotations
 
 import hashlib
 from collections.abc import Callable
-from dataclasses import dataclass
-from typing import TYPE_CHECKING, Any
+from dataclasses import dataclass, field
+from typing import TYPE_CHECKING, Any, Protocol
 
 import numpy as np
 
 from .. import trips
-from ..errors import ScheduleError
+from ..errors import LinkTimeout, ScheduleError
 from ..link import Client
 from ..logbook import Logbook, Writer, new_run
 from ..rows import sample_rows
@@ -23,6 +23,7 @@ if TYPE_CHECKING:
 
 PLACES = ("twin", "virtual")
 _DRY_TOKEN = 1
+_SILENCES_MOST = 8  # how often a host that was cut off comes back
 
 
 @dataclass(frozen=True)
@@ -34,6 +35,26 @@ class DryRun:
     cycles: list[dict[str, int]]
     marks: list[dict[str, int]]
     trips: list[dict[str, int]]
+    gaps: list[tuple[int, int]] = field(default_factory=list)
+    ends: list[dict[str, int]] = field(default_factory=list)
+
+
+class Harness(Protocol):
+    """Something between plant and board, fitted before the run: injected faults, say."""
+
+    def fit(self, engine: Any) -> None:
+        """Take its place."""
+        ...
+
+    @property
+    def silent(self) -> bool:
+        """Whether the host is cut off now."""
+        ...
+
+    @property
+    def cut(self) -> bool:
+        """Whether the host has been cut off so far."""
+        ...
 
 
 def open_engine(rig: Rig, seed: int, on: str) -> Any:
@@ -63,6 +84,7 @@ def dry_run(
     on: str = "twin",
     stop: Callable[[], str] = lambda: "",
     progress: Callable[[Outcome], None] = lambda outcome: None,
+    harness: Harness | None = None,
 ) -> DryRun:
     """Run a schedule in simulated time. Raises ScheduleError, Unavailable, LinkError."""
     from ..schedule import compile_program
@@ -74,9 +96,12 @@ def dry_run(
         client.hello()
         session.load(client, rig, program, every_ticks=1)
         before = engine.plant.truth()
+        if harness is not None:
+            harness.fit(engine)
         session.start(client, rig, program, _DRY_TOKEN)
         sink = Memory()
-        outcome = Collector(client, sink, _DRY_TOKEN, stop=stop, progress=progress).run()
+        collector = Collector(client, sink, _DRY_TOKEN, stop=stop, progress=progress)
+        outcome = _collect(collector, engine, harness)
         truth = engine.plant.truth()
     finally:
         engine.close()
@@ -90,7 +115,30 @@ def dry_run(
         cycles_planned=program.cycles,
         ticks_planned=program.ticks,
     )
-    return DryRun(result, sample_rows(rows), sink.cycles, sink.marks, outcome.trips)
+    return DryRun(
+        result,
+        sample_rows(rows),
+        sink.cycles,
+        sink.marks,
+        outcome.trips,
+        sink.gaps,
+        outcome.ends,
+    )
+
+
+def _collect(collector: Collector, engine: Any, harness: Harness | None) -> Outcome:
+    """Collect to the end; a host that the harness cuts off comes back once its cable is in."""
+    for _ in range(_SILENCES_MOST):
+        try:
+            return collector.run()
+        except LinkTimeout:
+            if harness is None or not harness.cut:
+                raise
+        while harness.silent:
+            engine.advance()
+        collector.client.hello(collector.client.saved_entry)
+        collector.heard_at = collector.client.port.now_s()
+    return collector.run()
 
 
 def _figures(
