@@ -8,7 +8,8 @@ must never hide what has to drop enable at once.
 """
 
 from . import trips
-from .limits import CHAMBER, COIL_A, COIL_B, INDEX, INLET, OUTLET, SUPPLY, Limits
+from .compat import const
+from .limits import Limits
 from .sensors import Sensors
 
 # What each watches, with its fields in limits.FIELDS: (code, watches, soft field, hard field).
@@ -27,23 +28,30 @@ RULES = (
     (trips.SUPPLY_LOW, "supply, where it is measured", "", "supply_low_mv"),
 )
 
-_OVER_CURRENT = INDEX["over_current_ma"]
-_OUTLET_REVERSE_SOFT = INDEX["outlet_reverse_soft_pa"]
-_OUTLET_REVERSE_HARD = INDEX["outlet_reverse_hard_pa"]
-_INLET_REVERSE_SOFT = INDEX["inlet_reverse_soft_pa"]
-_INLET_REVERSE_HARD = INDEX["inlet_reverse_hard_pa"]
-_CHAMBER_HIGH_SOFT = INDEX["chamber_high_soft_pa"]
-_CHAMBER_HIGH_HARD = INDEX["chamber_high_hard_pa"]
-_CHAMBER_LOW_SOFT = INDEX["chamber_low_soft_pa"]
-_CHAMBER_LOW_HARD = INDEX["chamber_low_hard_pa"]
-_OUTLET_HIGH_SOFT = INDEX["outlet_high_soft_pa"]
-_OUTLET_HIGH_HARD = INDEX["outlet_high_hard_pa"]
-_OUTLET_LOW_HARD = INDEX["outlet_low_hard_pa"]
-_HOT_SOFT = INDEX["hot_soft_mc"]
-_HOT_HARD = INDEX["hot_hard_mc"]
-_COIL_OPEN_MA = INDEX["coil_open_ma"]
-_COIL_OPEN_TICKS = INDEX["coil_open_ticks"]
-_SUPPLY_LOW = INDEX["supply_low_mv"]
+# Constants that a board's compiler folds: the places of limits.FIELDS, held to it by a test.
+_CHAMBER = const(0)
+_OUTLET = const(1)
+_COIL_A = const(2)
+_COIL_B = const(3)
+_SUPPLY = const(4)
+_INLET = const(5)
+_OVER_CURRENT_MA = const(60)
+_OUTLET_REVERSE_SOFT_PA = const(48)
+_OUTLET_REVERSE_HARD_PA = const(49)
+_INLET_REVERSE_SOFT_PA = const(50)
+_INLET_REVERSE_HARD_PA = const(51)
+_CHAMBER_HIGH_SOFT_PA = const(52)
+_CHAMBER_HIGH_HARD_PA = const(53)
+_CHAMBER_LOW_SOFT_PA = const(54)
+_CHAMBER_LOW_HARD_PA = const(55)
+_OUTLET_HIGH_SOFT_PA = const(56)
+_OUTLET_HIGH_HARD_PA = const(57)
+_OUTLET_LOW_HARD_PA = const(58)
+_HOT_SOFT_MC = const(65)
+_HOT_HARD_MC = const(66)
+_COIL_OPEN_MA = const(61)
+_COIL_OPEN_TICKS = const(62)
+_SUPPLY_LOW_MV = const(63)
 
 
 class Interlocks:
@@ -75,42 +83,42 @@ class Interlocks:
         """
         v = self.limits.active
         x = self.sensors.values
-        chamber_pa = x[CHAMBER]
-        outlet_pa = x[OUTLET]
-        a_ma = x[COIL_A]
-        b_ma = x[COIL_B]
+        chamber_pa = x[_CHAMBER]
+        outlet_pa = x[_OUTLET]
+        a_ma = x[_COIL_A]
+        b_ma = x[_COIL_B]
         outlet_reverse_pa = outlet_pa - chamber_pa
-        inlet_reverse_pa = chamber_pa - x[INLET]
+        inlet_reverse_pa = chamber_pa - x[_INLET]
         self.outlet_reverse_pa = outlet_reverse_pa
         self.inlet_reverse_pa = inlet_reverse_pa
-        over_ma = v[_OVER_CURRENT]
+        over_ma = v[_OVER_CURRENT_MA]
         if a_ma >= over_ma or -a_ma >= over_ma:
-            return self._fires(trips.OVER_CURRENT, COIL_A, a_ma, over_ma)
+            return self._fires(trips.OVER_CURRENT, _COIL_A, a_ma, over_ma)
         if b_ma >= over_ma or -b_ma >= over_ma:
-            return self._fires(trips.OVER_CURRENT, COIL_B, b_ma, over_ma)
+            return self._fires(trips.OVER_CURRENT, _COIL_B, b_ma, over_ma)
         # hard before soft, each on its own: a schedule step may tighten the one below the other
-        if outlet_reverse_pa >= v[_OUTLET_REVERSE_HARD]:
+        if outlet_reverse_pa >= v[_OUTLET_REVERSE_HARD_PA]:
             return self._fires(
-                trips.OUTLET_REVERSE, OUTLET, outlet_reverse_pa, v[_OUTLET_REVERSE_HARD])
-        if inlet_reverse_pa >= v[_INLET_REVERSE_HARD]:
+                trips.OUTLET_REVERSE, _OUTLET, outlet_reverse_pa, v[_OUTLET_REVERSE_HARD_PA])
+        if inlet_reverse_pa >= v[_INLET_REVERSE_HARD_PA]:
             return self._fires(
-                trips.INLET_REVERSE, INLET, inlet_reverse_pa, v[_INLET_REVERSE_HARD])
-        if chamber_pa >= v[_CHAMBER_HIGH_HARD]:
-            return self._fires(trips.CHAMBER_HIGH, CHAMBER, chamber_pa, v[_CHAMBER_HIGH_HARD])
-        if chamber_pa <= v[_CHAMBER_LOW_HARD]:
-            return self._fires(trips.CHAMBER_LOW, CHAMBER, chamber_pa, v[_CHAMBER_LOW_HARD])
-        if outlet_pa >= v[_OUTLET_HIGH_HARD]:
-            return self._fires(trips.OUTLET_HIGH, OUTLET, outlet_pa, v[_OUTLET_HIGH_HARD])
-        if outlet_pa <= v[_OUTLET_LOW_HARD]:
-            return self._fires(trips.OUTLET_LOW, OUTLET, outlet_pa, v[_OUTLET_LOW_HARD])
+                trips.INLET_REVERSE, _INLET, inlet_reverse_pa, v[_INLET_REVERSE_HARD_PA])
+        if chamber_pa >= v[_CHAMBER_HIGH_HARD_PA]:
+            return self._fires(trips.CHAMBER_HIGH, _CHAMBER, chamber_pa, v[_CHAMBER_HIGH_HARD_PA])
+        if chamber_pa <= v[_CHAMBER_LOW_HARD_PA]:
+            return self._fires(trips.CHAMBER_LOW, _CHAMBER, chamber_pa, v[_CHAMBER_LOW_HARD_PA])
+        if outlet_pa >= v[_OUTLET_HIGH_HARD_PA]:
+            return self._fires(trips.OUTLET_HIGH, _OUTLET, outlet_pa, v[_OUTLET_HIGH_HARD_PA])
+        if outlet_pa <= v[_OUTLET_LOW_HARD_PA]:
+            return self._fires(trips.OUTLET_LOW, _OUTLET, outlet_pa, v[_OUTLET_LOW_HARD_PA])
         self.soft = (
-            outlet_reverse_pa >= v[_OUTLET_REVERSE_SOFT]
-            or inlet_reverse_pa >= v[_INLET_REVERSE_SOFT]
-            or chamber_pa >= v[_CHAMBER_HIGH_SOFT]
-            or chamber_pa <= v[_CHAMBER_LOW_SOFT]
-            or outlet_pa >= v[_OUTLET_HIGH_SOFT]
-            or winding_a_mc >= v[_HOT_SOFT]
-            or winding_b_mc >= v[_HOT_SOFT]
+            outlet_reverse_pa >= v[_OUTLET_REVERSE_SOFT_PA]
+            or inlet_reverse_pa >= v[_INLET_REVERSE_SOFT_PA]
+            or chamber_pa >= v[_CHAMBER_HIGH_SOFT_PA]
+            or chamber_pa <= v[_CHAMBER_LOW_SOFT_PA]
+            or outlet_pa >= v[_OUTLET_HIGH_SOFT_PA]
+            or winding_a_mc >= v[_HOT_SOFT_MC]
+            or winding_b_mc >= v[_HOT_SOFT_MC]
         )
         return self._judge_coils(winding_a_mc, winding_b_mc, target_a_ma, target_b_ma)
 
@@ -119,30 +127,30 @@ class Interlocks:
         """Coils that carry too little or are too hot, and their supply; as judge()."""
         v = self.limits.active
         x = self.sensors.values
-        a_ma = x[COIL_A]
-        b_ma = x[COIL_B]
+        a_ma = x[_COIL_A]
+        b_ma = x[_COIL_B]
         open_ma = v[_COIL_OPEN_MA]
         if target_a_ma >= open_ma and a_ma + a_ma < target_a_ma \
                 or -target_a_ma >= open_ma and a_ma + a_ma > target_a_ma:
             self.open_ticks_a += 1
             if self.open_ticks_a >= v[_COIL_OPEN_TICKS]:
-                return self._fires(trips.COIL_OPEN, COIL_A, a_ma, target_a_ma)
+                return self._fires(trips.COIL_OPEN, _COIL_A, a_ma, target_a_ma)
         else:
             self.open_ticks_a = 0
         if target_b_ma >= open_ma and b_ma + b_ma < target_b_ma \
                 or -target_b_ma >= open_ma and b_ma + b_ma > target_b_ma:
             self.open_ticks_b += 1
             if self.open_ticks_b >= v[_COIL_OPEN_TICKS]:
-                return self._fires(trips.COIL_OPEN, COIL_B, b_ma, target_b_ma)
+                return self._fires(trips.COIL_OPEN, _COIL_B, b_ma, target_b_ma)
         else:
             self.open_ticks_b = 0
         self.slow = 0
-        if winding_a_mc >= v[_HOT_HARD]:
-            self.slow = self._fires(trips.COIL_HOT, COIL_A, winding_a_mc, v[_HOT_HARD])
-        elif winding_b_mc >= v[_HOT_HARD]:
-            self.slow = self._fires(trips.COIL_HOT, COIL_B, winding_b_mc, v[_HOT_HARD])
-        elif x[SUPPLY] <= v[_SUPPLY_LOW]:
-            self.slow = self._fires(trips.SUPPLY_LOW, SUPPLY, x[SUPPLY], v[_SUPPLY_LOW])
+        if winding_a_mc >= v[_HOT_HARD_MC]:
+            self.slow = self._fires(trips.COIL_HOT, _COIL_A, winding_a_mc, v[_HOT_HARD_MC])
+        elif winding_b_mc >= v[_HOT_HARD_MC]:
+            self.slow = self._fires(trips.COIL_HOT, _COIL_B, winding_b_mc, v[_HOT_HARD_MC])
+        elif x[_SUPPLY] <= v[_SUPPLY_LOW_MV]:
+            self.slow = self._fires(trips.SUPPLY_LOW, _SUPPLY, x[_SUPPLY], v[_SUPPLY_LOW_MV])
         return 0
 
     def _fires(self, code: int, channel: int, value: int, limit: int) -> int:

@@ -108,9 +108,11 @@ class Program:
     def patrol(self) -> bool:
         """Look at one more record; False, and `at` stays on it, when it is not what was sealed."""
         i = self.at
-        if self.shadow[i] != self._fold(i):
+        word = (self.op[i] << 8) ^ self.arg[i] ^ (self.step[i] << 12)         # as _fold()
+        if self.shadow[i] ^ word ^ (self.a_ma[i] << 4) ^ (self.b_ma[i] << 8) ^ self.n[i] != -1:
             return False
-        self.at = i + 1 if i + 1 < self.count else 0
+        i += 1
+        self.at = i if i < self.count else 0
         return True
 
 

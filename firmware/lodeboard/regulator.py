@@ -20,7 +20,6 @@ class Regulator:
         self.duty_max_q15 = 0
         self.integral_q8 = 0
         self.duty_q15 = 0
-        self.target_ma = 0        # as last stepped
         self.expected_q4 = 0      # mA in Q4: what the coil should carry by now
 
     def load(self, limits: Limits) -> None:
@@ -38,12 +37,10 @@ class Regulator:
         """Forget the integral: the output is off."""
         self.integral_q8 = 0
         self.duty_q15 = 0
-        self.target_ma = 0
         self.expected_q4 = 0
 
     def step(self, target_ma: int, current_ma: int) -> int:
         """The duty for this tick."""
-        self.target_ma = target_ma
         expected_q4 = self.expected_q4
         self.expected_q4 = expected_q4 + ((((target_ma << 4) - expected_q4) * self.response_q8) >> 8)
         if target_ma == 0 and self.duty_min_q15 == 0:

@@ -7,9 +7,10 @@ last good value stands in.
 from array import array
 
 from . import trips
-from .limits import CHANNEL_STRIDE, INDEX, N_CHANNELS, Limits
+from .compat import const
+from .limits import CHANNEL_STRIDE, N_CHANNELS, Limits
 
-_BAD_TICKS = INDEX["sensor_bad_ticks"]
+_SENSOR_BAD_TICKS = const(86)       # held to limits.FIELDS by a test
 
 
 class Sensors:
@@ -48,37 +49,47 @@ class Sensors:
         The tick reads the counts, and nobody else: one read a period, in every place.
         """
         counts = self.counts
+        values = self.values
+        last = self.last
         v = self.limits.values
-        bad_ticks = v[_BAD_TICKS]
         found = 0
         for j in range(self.n_present):
             channel = self.present[j]
-            base = channel * CHANNEL_STRIDE
+            base = channel << 3                      # CHANNEL_STRIDE fields each
             raw = counts[channel]
             if raw < v[base + 4] or raw > v[base + 5]:
                 self.bad[channel] += 1
-                if found == 0 and self.bad[channel] >= bad_ticks:
-                    limit = v[base + 4] if raw < v[base + 4] else v[base + 5]
-                    found = self._implausible(trips.SENSOR_RANGE, channel, raw, limit)
+                if found == 0:
+                    found = self._out_of_range(channel, raw)
                 continue
             self.bad[channel] = 0
             value = ((raw * v[base + 1]) >> v[base + 2]) + v[base + 3]
-            if v[base + 6]:
-                if raw != self.last[channel]:
-                    self.still[channel] = 0
-                else:
-                    self.still[channel] += 1
-                    if found == 0 and self.still[channel] >= v[base + 6]:
-                        found = self._implausible(trips.SENSOR_STUCK, channel, raw, v[base + 6])
-            if v[base + 7] and self.last[channel] >= 0:
-                moved = value - self.values[channel]
-                if moved < 0:
-                    moved = -moved
-                if found == 0 and moved >= v[base + 7]:
-                    found = self._implausible(trips.SENSOR_JUMP, channel, moved, v[base + 7])
-            self.last[channel] = raw
-            self.values[channel] = value
+            before = last[channel]
+            if raw == before:
+                self.still[channel] += 1
+                if v[base + 6] and self.still[channel] >= v[base + 6] and found == 0:
+                    found = self._implausible(trips.SENSOR_STUCK, channel, raw, v[base + 6])
+            else:
+                self.still[channel] = 0
+                last[channel] = raw
+                most = v[base + 7]
+                if most and before >= 0 and found == 0:
+                    moved = value - values[channel]
+                    if moved < 0:
+                        moved = -moved
+                    if moved >= most:
+                        found = self._implausible(trips.SENSOR_JUMP, channel, moved, most)
+            values[channel] = value
         return found
+
+    def _out_of_range(self, channel: int, raw: int) -> int:
+        """A trip code once it has been so for long enough; until then the last good value stands."""
+        v = self.limits.values
+        base = channel << 3
+        if self.bad[channel] < v[_SENSOR_BAD_TICKS]:
+            return 0
+        limit = v[base + 4] if raw < v[base + 4] else v[base + 5]
+        return self._implausible(trips.SENSOR_RANGE, channel, raw, limit)
 
     def any_bad(self) -> bool:
         """Whether any channel that is there was out of range when last converted."""

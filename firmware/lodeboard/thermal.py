@@ -56,9 +56,10 @@ class Coil:
 
     def step(self, current_ma: int) -> None:
         """Account one tick of current; update the nodes every 64 ticks."""
-        self.sum_sq += (current_ma * current_ma) >> 10
-        self.ticks += 1
-        if self.ticks >= _EVERY:
+        ticks = self.ticks + 1
+        self.ticks = ticks
+        self.sum_sq = self.sum_sq + ((current_ma * current_ma) >> 10)
+        if ticks >= _EVERY:
             self._update()
 
     def _update(self) -> None:
