@@ -54,6 +54,8 @@ class ScriptHal(Hal):
         self.enable = 0
         self.swing = 300
         self.coil = 0
+        self.coil_b = 0
+        self.input_bits = 0
         self.stored = {}
 
     def now_us(self):
@@ -65,13 +67,15 @@ class ScriptHal(Hal):
         into[0] = 8192 + (n * 7) % self.swing
         into[1] = 8192 + 392 + (n * 3) % 11
         into[2] = 2048 + self.coil + (n & 1)
+        into[3] = 2048 + self.coil_b + (n & 1)
 
     def inputs(self):
-        return 0
+        return self.input_bits
 
     def drive(self, duty_a_q15, duty_b_q15, enable):
         self.enable = enable
         self.coil = duty_a_q15 >> 4
+        self.coil_b = duty_b_q15 >> 4
 
     def feed(self):
         pass
@@ -115,17 +119,21 @@ def put(store, data):
     assert store.seal(len(data), binascii.crc32(data), FINGERPRINT)
 
 
-def board_ready():
-    """A board with limits and a program of endless short cycles."""
+ENDLESS = (
+    (program.LOOP, 0, 0, 0, 0, 1000000), (program.CYCLE, 0, 0, 0, 0, 0),
+    (program.SEG, 0, 1, 900, 0, 20), (program.SEG, 0, 1, 900, 0, 60),
+    (program.SEG, 0, 1, 0, 0, 20), (program.MARK, 0, 1, 0, 0, 3), (program.SEG, 0, 1, 0, 0, 100),
+    (program.NEXT, 0, 0, 0, 0, 0), (program.END, 0, 2, 0, 0, 0))
+
+
+def board_ready(rows=ENDLESS, changes=None):
+    """A board with limits and a program; by default one of endless short cycles."""
     hal = ScriptHal()
     board = Board(hal, b"bundle00", storage.SAMPLE_ROWS)
     board.boot()
+    values = dict(VALUES)
+    values.update(changes or {})
     put(board.limits, b"".join(
-        struct.pack("<i", VALUES.get(name, 0)) for name in limits.FIELDS))
-    rows = (
-        (program.LOOP, 0, 0, 0, 0, 1000000), (program.CYCLE, 0, 0, 0, 0, 0),
-        (program.SEG, 0, 1, 900, 0, 20), (program.SEG, 0, 1, 900, 0, 60),
-        (program.SEG, 0, 1, 0, 0, 20), (program.MARK, 0, 1, 0, 0, 3), (program.SEG, 0, 1, 0, 0, 100),
-        (program.NEXT, 0, 0, 0, 0, 0), (program.END, 0, 2, 0, 0, 0))
+        struct.pack("<i", values.get(name, 0)) for name in limits.FIELDS))
     put(board.program, b"".join(struct.pack(program.RECORD_FORMAT, *row) for row in rows))
     return hal, board, Loop(board)

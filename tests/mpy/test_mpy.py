@@ -31,3 +31,13 @@ def test_both_interpreters_give_the_same_numbers():
     here = subprocess.run([sys.executable, str(HERE / "vectors.py"), str(FIRMWARE)],
                           capture_output=True, text=True, check=True).stdout
     assert real == here
+
+
+def test_every_way_out_of_a_run_allocates_nothing_while_the_heap_is_locked():
+    """Each kind of trip, a stop, a pause, the program's end; two coils, nested loops, step limits."""
+    assert run_script("locked_trips.py", heap="1M") == "ok 12\n"
+
+
+def test_each_subject_of_the_cost_figures_runs_with_the_heap_locked():
+    for subject in ("unit", "core", "whole", "bare"):
+        assert run_script("tick_count.py", subject, "130", heap="1M") == ""
