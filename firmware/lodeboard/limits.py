@@ -127,12 +127,13 @@ class Limits:
         if length != BLOB_BYTES or not blob.check(length, crc32):
             return False
         for i in range(N_FIELDS):
-            value = struct.unpack_from("<i", blob.data, 4 * i)[0]
+            self.active[i] = struct.unpack_from("<i", blob.data, 4 * i)[0]
+        if not _can_run(self.active):
+            return False             # the tick still converts with what it had
+        for i in range(N_FIELDS):
+            value = self.active[i]
             self.values[i] = value
-            self.active[i] = value
             self.shadow[i] = ~value
-        if not _can_run(self.values):
-            return False
         self.at = 0
         blob.crc32 = crc32
         blob.fingerprint = fingerprint
@@ -149,8 +150,8 @@ class Limits:
         return True
 
     def get(self, name: str) -> int:
-        """A limit in force, by name. For code that runs before arming."""
-        return self.active[INDEX[name]]
+        """A limit as the host sent it, by name. For code that does not run every tick."""
+        return self.values[INDEX[name]]
 
     def relax(self) -> None:
         """Every limit that a step may have tightened back to the rig's."""

@@ -208,6 +208,8 @@ def test_go_behind_its_own_last_cycle_is_refused():
 ])
 def test_limits_that_no_board_could_run_on_are_not_sealed(name, value):
     bench = Bench()
+    assert bench.arm() == 0
+    assert bench.board.simple("disarm") == 0
     data = struct.pack(f"<{limits.N_FIELDS}i", *(value if field == name else V[field]
                                                 for field in limits.FIELDS))
     store = bench.board.limits
@@ -215,6 +217,8 @@ def test_limits_that_no_board_could_run_on_are_not_sealed(name, value):
         assert store.blob.put(at, data[at : at + 32], len(data[at : at + 32]))
     assert not store.seal(len(data), binascii.crc32(data), bench.fingerprint)
     assert bench.arm() == messages.NO_LIMITS
+    bench.ticks(5)                             # what was in force before still converts
+    assert bench.state == "safe"
 
 
 _SEG = (program.SEG, 0, 0, 100, 0, 5)
