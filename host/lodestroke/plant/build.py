@@ -11,11 +11,12 @@ import numpy as np
 from . import layout as k
 from .coil import field_table
 from .slug import drag_circle, drag_rectangle
+from .steps import substeps
+from .valves import series_collapse
 
 if TYPE_CHECKING:
     from ..rig import Rig
 
-SUBSTEP_S = 1e-4  # resolves slug on chamber and spring (some 60 Hz) and coil L/R (0.6 ms)
 TABLE_N = 4001
 _LIMIT_SIGMA = 3.0  # tolerances are cut at three standard deviations
 
@@ -39,11 +40,13 @@ def params_from_rig(rig: Rig, seed: int | None = None) -> Params:
         _valves(p, getattr(rig.valves, side), base)
     _driver(p, rig)
     p[k.TICK_S] = rig.board.tick
-    p[k.SUBSTEPS] = max(1, math.ceil(rig.board.tick / SUBSTEP_S - 1e-9))
     p[k.DRIFT_CRACK] = rig.drift.cracking
     p[k.DRIFT_COLLAPSE] = rig.drift.collapse
+    p[k.DRIFT_DRAG] = rig.drift.viscosity
+    p[k.DRIFT_M_S] = rig.drift.saturation_magnetisation
     if seed is not None:
         _vary(p, rig, np.random.default_rng([seed, 0x70756D70]))
+    p[k.SUBSTEPS] = substeps(p, str(rig.source))
     tables = _tables(p, rig)
     return Params(p, tables[0], tables[1], _sensors(rig, rig.board.tick / p[k.SUBSTEPS]))
 
@@ -80,10 +83,9 @@ def _vessels(p: np.ndarray, rig: Rig) -> None:
 
 def _valves(p: np.ndarray, valves: list, base: int) -> None:  # type: ignore[type-arg]
     """Valves in series on one side, lumped: see valves.py."""
-    for n, name in enumerate(
-        ("cracking", "closing", "resistance", "inertance", "leak", "collapse")
-    ):
+    for n, name in enumerate(("cracking", "closing", "resistance", "inertance", "leak")):
         p[base + n] = sum(getattr(valve, name) for valve in valves)
+    p[base + 5] = series_collapse([v.collapse for v in valves], [v.leak for v in valves])
     # a conducting valve without inertance would be an algebraic loop: give it a millisecond's worth
     p[base + 3] = max(p[base + 3], 1e-3 * p[base + 2])
     p[base + 6] = max(valve.reform for valve in valves)

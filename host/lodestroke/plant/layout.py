@@ -82,14 +82,17 @@ from __future__ import annotations
     SUBSTEPS,
     DRIFT_CRACK,
     DRIFT_COLLAPSE,
+    DRIFT_DRAG,
+    DRIFT_M_S,  # relative, per stroke of coil a
     TABLE_FROM,
     TABLE_STEP,
     TABLE_N,
     N_P,
-) = range(58)
+) = range(60)
 
 # m: modes (closed, open, collapsed), timers and tallies
 CLOSED, OPEN, COLLAPSED = 0.0, 1.0, 2.0
+STICK_FLOW = 1e-8  # flow over which contact-line hysteresis changes sign, m3/s
 (
     MODE_IN,
     MODE_OUT,

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import threading
+from collections.abc import Callable
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -15,6 +17,7 @@ if TYPE_CHECKING:
     from ..rig import Rig
 
 _FULL_DUTY = 32767.0
+_PATIENCE_S = 0.7  # a warm cache is loaded in less
 
 
 class Plant:
@@ -92,3 +95,18 @@ class Plant:
             "collapses_inlet": float(m[k.COLLAPSES_IN]),
             "collapses_outlet": float(m[k.COLLAPSES_OUT]),
         }
+
+
+def warm_up(rig: Rig, say: Callable[[str], None] | None = None) -> None:
+    """Compile the plant, or load it from the cache; `say` hears once when that takes its time."""
+    timer = None
+    if say is not None:
+        text = "compiling the simulated pump; kept for later runs ..."
+        timer = threading.Timer(_PATIENCE_S, say, (text,))
+        timer.daemon = True
+        timer.start()
+    try:
+        Plant(params_from_rig(rig)).step(0, 0, 0)
+    finally:
+        if timer is not None:
+            timer.cancel()

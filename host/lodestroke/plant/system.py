@@ -1,7 +1,7 @@
 """The whole pump: one right-hand side, and the fixed-step integrator of one control tick.
 
 rhs() is plain: dy from y, parameters, modes and drive; anyone may integrate it with another solver,
-with the modes held between the events of valves.next_mode. advance() does classical Runge-Kutta of
+with the modes held between the events of events.py. advance() does classical Runge-Kutta of
 order four in equal substeps of a tick and judges the valves' modes after each substep.
 """
 
@@ -12,22 +12,38 @@ from numba import njit
 
 from . import layout as k
 from .coil import interpolate, resistance
+from .events import forward, settle, worn
 from .slug import air_spring, magnetic_pressure
 from .valves import acceleration, flow, next_mode
 
 _DIODE_A = 5e-3          # below this a free-wheeling diode no longer conducts
-_SMOOTH_M3_S = 1e-8  # flow over which contact-line hysteresis changes sign
 
 
 @njit(cache=True)
-def coil_voltage(duty: float, enable: float, i: float, p: np.ndarray) -> float:
-    """Average voltage across a coil over a PWM period, V. Source: averaged bridge, common practice."""
+def bus_voltage(y: np.ndarray, p: np.ndarray, drive: np.ndarray) -> float:
+    """Supply behind its source resistance, V, sagging under what both coils draw on average.
+
+    Source: averaged bridge, a capacitor on the bus that carries the ripple; common practice.
+    """
+    if drive[2] == 0.0:
+        return p[k.SUPPLY]
+    drawn = abs(drive[0]) * abs(y[k.I_A]) + abs(drive[1]) * abs(y[k.I_B])
+    return p[k.SUPPLY] - p[k.R_SOURCE] * drawn
+
+
+@njit(cache=True)
+def coil_voltage(duty: float, enable: float, i: float, bus: float, p: np.ndarray) -> float:
+    """Average voltage across a coil over a PWM period, V; without enable it free-wheels.
+
+    Half bridge: through the diode; full bridge: through two diodes back into the supply, whose drops
+    are taken as one. Source: averaged bridge, common practice.
+    """
     if enable == 0.0:
         if i == 0.0:
             return 0.0
         back = p[k.DIODE] + (p[k.SUPPLY] if p[k.FULL_BRIDGE] > 0.0 else 0.0)
         return -back if i > 0.0 else back
-    return duty * (p[k.SUPPLY] - p[k.R_SOURCE] * abs(duty) * abs(i))
+    return duty * bus
 
 
 @njit(cache=True)
@@ -60,13 +76,15 @@ def rhs(
     dy: np.ndarray,
 ) -> None:
     """dy/dt into dy, shape (N_Y,). drive: duty a, duty b (-1 to 1), enable (0 or 1)."""
+    bus = bus_voltage(y, p, drive)
+    strokes = m[k.STROKES]
     for c in range(2):
         i = y[k.I_A + c]
         at = k.R20_A + c * (k.R20_B - k.R20_A)
         winding = y[k.TW_A + 2 * c]
         body = y[k.TB_A + 2 * c]
         ohm = resistance(p[at], p[at + 2], winding)
-        dy[k.I_A + c] = (coil_voltage(drive[c], drive[2], i, p) - ohm * i) / p[at + 1]
+        dy[k.I_A + c] = (coil_voltage(drive[c], drive[2], i, bus, p) - ohm * i) / p[at + 1]
         across = (winding - body) / p[at + 3]
         dy[k.TW_A + 2 * c] = (ohm * i * i - across) / p[at + 4]
         dy[k.TB_A + 2 * c] = (across - (body - p[k.AMBIENT_C]) / p[at + 5]) / p[at + 6]
@@ -74,13 +92,15 @@ def rhs(
     q = y[k.Q]
     chamber = y[k.P_CH]
     outlet = y[k.P_OUT]
-    push = slug_pressure(x, y[k.I_A], y[k.I_B], p, table_a, table_b)
+    # particles lost thin out saturation and susceptibility alike, and p_m goes with both
+    push = slug_pressure(x, y[k.I_A], y[k.I_B], p, table_a, table_b) * worn(p[k.DRIFT_M_S], strokes)
     spring = air_spring(x, p[k.AREA], p[k.SPRING_V], p[k.AMBIENT_P], p[k.SPRING_N])
-    stick = p[k.STICK] * np.tanh(q / _SMOOTH_M3_S)
+    stick = p[k.STICK] * np.tanh(q / k.STICK_FLOW)
+    drag = p[k.SLUG_DRAG] * worn(p[k.DRIFT_DRAG], strokes)
     dy[k.X] = q / p[k.AREA]
-    dy[k.Q] = (push + spring - chamber - p[k.SLUG_DRAG] * q - stick) / p[k.SLUG_INERTANCE]
-    across_in = p[k.HEAD_IN] - chamber
-    across_out = chamber - outlet
+    dy[k.Q] = (push + spring - chamber - drag * q - stick) / p[k.SLUG_INERTANCE]
+    across_in = forward(0, y, p)
+    across_out = forward(1, y, p)
     into = flow(m[k.MODE_IN], y[k.Q_IN], across_in, p[k.LEAK_IN])
     out = flow(m[k.MODE_OUT], y[k.Q_OUT], across_out, p[k.LEAK_OUT])
     load = (outlet - p[k.HEAD_OUT]) / p[k.R_OUT]
@@ -121,26 +141,48 @@ def _clamp(y: np.ndarray, p: np.ndarray, drive: np.ndarray, before: np.ndarray) 
 @njit(cache=True)
 def _judge_valves(y: np.ndarray, p: np.ndarray, m: np.ndarray, dt: float) -> None:
     """Modes after a substep, collapses counted, least margin kept."""
-    worn = 1.0 + p[k.DRIFT_CRACK] * m[k.STROKES]
-    worn_collapse = 1.0 + p[k.DRIFT_COLLAPSE] * m[k.STROKES]
+    crack_left = worn(p[k.DRIFT_CRACK], m[k.STROKES])
+    collapse_left = worn(p[k.DRIFT_COLLAPSE], m[k.STROKES])
     for side in range(2):
         base = k.CRACK_IN + side * (k.CRACK_OUT - k.CRACK_IN)
         dp = p[k.HEAD_IN] - y[k.P_CH] if side == 0 else y[k.P_CH] - y[k.P_OUT]
-        q = y[k.Q_IN + side]
-        mode = m[k.MODE_IN + side]
-        collapse = p[base + 5] * worn_collapse
+        collapse = p[base + 5] * collapse_left
         m[k.SINCE_IN + side] += dt
         m[k.MIN_MARGIN] = min(m[k.MIN_MARGIN], collapse + dp)
+        mode = m[k.MODE_IN + side]
         new = next_mode(
-            mode, q, dp, m[k.SINCE_IN + side], p[base] * worn, p[base + 1], collapse, p[base + 6]
-        )
-        if new == k.COLLAPSED and -dp > collapse:
-            m[k.SINCE_IN + side] = 0.0
-            if mode != k.COLLAPSED:
-                m[k.COLLAPSES_IN + side] += 1.0
-        if new != mode:
-            m[k.MODE_IN + side] = new
-            y[k.Q_IN + side] = 0.0
+            mode, y[k.Q_IN + side], dp, m[k.SINCE_IN + side],
+            p[base] * crack_left, p[base + 1], collapse, p[base + 6],
+        )  # numbers first: settle() is right too, but a call with arrays costs more than this
+        if new != mode or -dp > collapse:
+            settle(side, y, p, m)
+
+
+@njit(cache=True)
+def _runge_kutta(
+    y: np.ndarray,
+    p: np.ndarray,
+    m: np.ndarray,
+    drive: np.ndarray,
+    table_a: np.ndarray,
+    table_b: np.ndarray,
+    work: np.ndarray,
+    dt: float,
+) -> None:
+    """One classical step of order four, in place; loops, because array expressions allocate."""
+    k1, k2, k3, k4, at = work[0], work[1], work[2], work[3], work[4]
+    rhs(y, p, m, drive, table_a, table_b, k1)
+    for n in range(y.shape[0]):
+        at[n] = y[n] + 0.5 * dt * k1[n]
+    rhs(at, p, m, drive, table_a, table_b, k2)
+    for n in range(y.shape[0]):
+        at[n] = y[n] + 0.5 * dt * k2[n]
+    rhs(at, p, m, drive, table_a, table_b, k3)
+    for n in range(y.shape[0]):
+        at[n] = y[n] + dt * k3[n]
+    rhs(at, p, m, drive, table_a, table_b, k4)
+    for n in range(y.shape[0]):
+        y[n] += dt / 6.0 * (k1[n] + 2.0 * k2[n] + 2.0 * k3[n] + k4[n])
 
 
 @njit(cache=True)
@@ -158,24 +200,18 @@ def advance(
     """One control tick. work: scratch of shape (6, N_Y); lagged: what each sensor's filter holds."""
     n = int(p[k.SUBSTEPS])
     dt = p[k.TICK_S] / n
+    before = work[5]
     for _ in range(n):
-        before = work[5]
         before[:] = y
-        rhs(y, p, m, drive, table_a, table_b, work[0])
-        work[4][:] = y + 0.5 * dt * work[0]
-        rhs(work[4], p, m, drive, table_a, table_b, work[1])
-        work[4][:] = y + 0.5 * dt * work[1]
-        rhs(work[4], p, m, drive, table_a, table_b, work[2])
-        work[4][:] = y + dt * work[2]
-        rhs(work[4], p, m, drive, table_a, table_b, work[3])
-        y += dt / 6.0 * (work[0] + 2.0 * work[1] + 2.0 * work[2] + work[3])
+        _runge_kutta(y, p, m, drive, table_a, table_b, work, dt)
         _clamp(y, p, drive, before)
         _judge_valves(y, p, m, dt)
         m[k.PEAK_CH] = max(m[k.PEAK_CH], y[k.P_CH])
         m[k.LOW_CH] = min(m[k.LOW_CH], y[k.P_CH])
         m[k.PEAK_OUT] = max(m[k.PEAK_OUT], y[k.P_OUT])
+        bus = bus_voltage(y, p, drive)
         for channel in range(sensors.shape[0]):
-            value = true_value(channel, y, p)
+            value = true_value(channel, y, p, bus)
             lagged[channel] += sensors[channel, k.S_LAG] * (value - lagged[channel])
     m[k.PEAK_C] = max(m[k.PEAK_C], y[k.TW_A], y[k.TW_B])
     on = 1.0 if drive[2] > 0.0 and abs(drive[0]) > 1e-3 else 0.0
@@ -187,7 +223,7 @@ def advance(
 
 
 @njit(cache=True)
-def true_value(channel: int, y: np.ndarray, p: np.ndarray) -> float:
+def true_value(channel: int, y: np.ndarray, p: np.ndarray, bus: float) -> float:
     """What a sensor channel looks at: Pa, A or V, in the order of lodeboard.limits.CHANNELS."""
     if channel == 0:
         return y[k.P_CH]
@@ -198,5 +234,5 @@ def true_value(channel: int, y: np.ndarray, p: np.ndarray) -> float:
     if channel == 3:
         return y[k.I_B]
     if channel == 4:
-        return p[k.SUPPLY]
+        return bus
     return p[k.HEAD_IN]

@@ -3,11 +3,14 @@
 Open, a valve costs its closing pressure plus resistance times flow, and its liquid has inertance; it
 closes when forward flow has ended. Closed, it leaks backwards through `leak`. Past collapse in
 reverse the plug is gone: a plain passage, until `reform` has passed with little pressure across.
-Valves in series on one side are lumped: pressures, resistances and inertances add.
+Valves in series on one side are lumped: pressures, resistances and inertances add, but the first to
+collapse is the one with the greatest share of the reverse pressure for its strength: series_collapse.
 Source: lumped-element hydraulics; threshold and hysteresis as measured at a valve, common practice.
 """
 
 from __future__ import annotations
+
+from collections.abc import Sequence
 
 from numba import njit
 
@@ -55,3 +58,16 @@ def next_mode(
     if mode == COLLAPSED and since_s >= reform_s and abs(dp) < closing:
         return CLOSED
     return mode
+
+
+def series_collapse(collapse_pa: Sequence[float], leak_pa_s_per_m3: Sequence[float]) -> float:
+    """Reverse pressure over closed valves in series at which the first of them collapses, Pa.
+
+    One reverse leak flows through all, so that each takes a share of the pressure that goes with its
+    leak's resistance. Source: resistances in series.
+    """
+    whole = sum(leak_pa_s_per_m3)
+    return min(
+        collapse * whole / leak
+        for collapse, leak in zip(collapse_pa, leak_pa_s_per_m3, strict=True)
+    )
