@@ -41,3 +41,9 @@ def test_every_way_out_of_a_run_allocates_nothing_while_the_heap_is_locked():
 def test_each_subject_of_the_cost_figures_runs_with_the_heap_locked():
     for subject in ("unit", "core", "whole", "bare"):
         assert run_script("tick_count.py", subject, "130", heap="1M") == ""
+
+
+def test_a_fault_under_the_locked_heap_leaves_the_coil_off_and_the_trip_kept():
+    said = run_script("locked_fault.py")
+    assert "Traceback" in said                     # as text for the host to carry to the user
+    assert said.endswith("AttributeError\n1000\n")
