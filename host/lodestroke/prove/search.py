@@ -89,6 +89,16 @@ def cases(rig: Rig, ticks: int) -> st.SearchStrategy[Case]:
     )
 
 
+class _Enough(KeyboardInterrupt):
+    """The search is to end now. Hypothesis takes any ordinary exception for a finding."""
+
+
+def _size(case: Case) -> tuple[int, int]:
+    """How large a case is: fewer faults first, then smaller numbers."""
+    numbers = sum(f.start_tick + f.length_ticks + abs(f.magnitude) for f in case.faults)
+    return len(case.faults), case.plant_seed + numbers
+
+
 class _Search:
     """Runs each case once, remembers its verdict, and keeps within the budget of runs."""
 
@@ -111,14 +121,15 @@ class _Search:
         if case not in self.known:
             if self.stop():
                 proof.interrupted = True
-                return False
+                raise _Enough
             if proof.broken is not None and proof.shrink_runs >= SHRINKS * proof.tries:
-                return False
+                raise _Enough
             self.known[case] = self._run(case)
             self.progress(proof)
         for broken in self.known[case]:
             if proof.broken is None or broken.invariant == proof.broken.invariant:
-                proof.broken, proof.case = proof.broken or broken, proof.case or case
+                if proof.case is None or _size(case) < _size(proof.case):
+                    proof.broken, proof.case = broken, case
                 return True
         return False
 
@@ -184,10 +195,10 @@ def search(
     try:
         with _own_folder():
             case = find(cases(rig, ticks), looking.breaks, settings=how, random=random.Random(seed))
-    except NoSuchExample:
+    except (NoSuchExample, _Enough):
         return proof
     assert proof.broken is not None
-    first = proof.broken.invariant
+    name = proof.broken.invariant
     proof.case = case
-    proof.broken = next(b for b in looking.known[case] if b.invariant == first)
+    proof.broken = next(broken for broken in looking.known[case] if broken.invariant == name)
     return proof
