@@ -44,7 +44,49 @@ def pressure(v: dict[str, float], traction: bool = False) -> float:
     return total
 
 
+def gradient(v: dict[str, float]) -> float:
+    """dH/dz by a central difference of order four."""
+    h = 1e-4
+    at = {n: field({**v, "z_from_centre_m": v["z_from_centre_m"] + n * h}) for n in (-2, -1, 1, 2)}
+    return (at[-2] - 8 * at[-1] + 8 * at[1] - at[2]) / (12 * h)
+
+
+def magnetisation_of_particles(v: dict[str, float]) -> float:
+    """Our curve, with the saturation and susceptibility that such particles have."""
+    moment = v["domain_magnetisation_A_per_m"] * math.pi * v["diameter_m"] ** 3 / 6.0
+    h0 = v["k_J_per_K"] * v["temperature_K"] / (MU0 * moment)
+    ms = v["volume_fraction"] * v["domain_magnetisation_A_per_m"]
+    return slug.magnetisation(float(v["H_A_per_m"]), ms, ms / (3.0 * h0))
+
+
+def burst(v: dict[str, float]) -> float:
+    high, low = (slug.magnetic_pressure(float(v[n]), v["Ms_A_per_m"], chi(v))
+                 for n in ("Hmax_A_per_m", "Hmin_A_per_m"))
+    return high - low
+
+
+def drag_force(v: dict[str, float]) -> float:
+    radius = v["diameter_m"] / 2.0
+    area = math.pi * radius**2
+    drag = slug.drag_circle(v["viscosity_Pa_s"], v["slug_length_m"], radius)
+    return drag * v["velocity_m_per_s"] * area * area
+
+
+def gas_compliance(v: dict[str, float]) -> float:
+    """-dV/dp of our spring at rest, by a central difference."""
+    volume, small = v["gas_volume_uL"] * 1e-9, 1e-5 * v["gas_volume_uL"] * 1e-9
+    high, low = (slug.air_spring(x, 1.0, volume, float(v["absolute_pressure_Pa"]), v["exponent"])
+                 for x in (-small, small))
+    return 2.0 * small / (high - low)
+
+
 COMPUTE = {
+    "coil.gradient": gradient,
+    "liquid.magnetisation": magnetisation_of_particles,
+    "seal.burst.langevin": burst,
+    "slug.force": lambda v: pressure(v) * math.pi * v["bore_radius_m"] ** 2 * 1e3,
+    "chan.slug_drag": drag_force,
+    "comp.gas.adiabatic": gas_compliance,
     "coil.H": field,
     "coil.B": lambda v: field(v) * MU0 * 1e3,
     "liquid.langevin": lambda v: slug.langevin(float(v["x"])),
@@ -84,8 +126,11 @@ def test_element_meets_the_outside_value(value, compute):
     got = compute(value["inputs"])
     relative = value.get("rel_tol") or 0.0
     absolute = value.get("abs_tol") or 0.0
-    # the constant mu0 is given to 12 digits in the values; the rectangle's series is cut at 40 terms
-    assert got == pytest.approx(value["expected"], rel=max(relative, 2e-8), abs=absolute), value["source"]
+    # the constant mu0 is given to 12 digits in the values; the rectangle's series is cut at 40 terms;
+    # a difference quotient is good to some 1e-6, and a weak field is only in the limit a parabola
+    least = 1e-6 if value["id"].startswith(("coil.gradient", "comp.gas.adia")) else 2e-8
+    least = 1e-4 if value["id"].startswith("liquid.p_m.weak") else least
+    assert got == pytest.approx(value["expected"], rel=max(relative, least), abs=absolute), value["source"]
 
 
 def test_every_kept_value_is_used():

@@ -13,7 +13,7 @@ from lodeboard import limits as board_limits
 from lodeboard import thermal
 from lodestroke.plant import Plant, params_from_rig, rhs
 from lodestroke.plant import layout as k
-from lodestroke.rig import load_rig
+from lodestroke.rig import limits_blob, load_rig
 
 RIG = load_rig(Path(__file__).resolve().parents[2] / "hil_configs" / "bench-sim.toml")
 VALUES = {v["id"]: v for v in json.loads(
@@ -171,11 +171,10 @@ def test_the_boards_estimate_follows_the_two_node_value_at_constant_current_from
         "body_to_air": v["Rba_K_per_W"], "body_heat": v["Cb_J_per_K"]})
     rig = RIG.model_copy(update={
         "coils": [coil], "ambient": RIG.ambient.model_copy(update={"temperature": v["ambient_degC"]})})
-    from lodestroke.rig import limits_values
-
+    blob, crc32 = limits_blob(rig)
     store = board_limits.Limits()
-    for name, number in limits_values(rig).items():
-        store.active[board_limits.INDEX[name]] = number
+    assert store.blob.put(0, blob, len(blob))
+    assert store.seal(len(blob), crc32, rig.fingerprint)
     estimate = thermal.Coil()
     estimate.load(store)
     ticks = 0

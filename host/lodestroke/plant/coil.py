@@ -53,6 +53,7 @@ def field_per_ampere(
     return turns / (2.0 * length_m * (outer_m - inner_m)) * total
 
 
+@njit(cache=True)
 def field_table(
     z_from_m: float,
     z_step_m: float,
@@ -63,12 +64,10 @@ def field_table(
     outer_m: float,
 ) -> np.ndarray:
     """field_per_ampere at n places from z_from_m on, shape (n,)."""
-    return np.array(
-        [
-            field_per_ampere(z_from_m + k * z_step_m, turns, length_m, inner_m, outer_m)
-            for k in range(n)
-        ]
-    )
+    table = np.empty(n)
+    for k in range(n):
+        table[k] = field_per_ampere(z_from_m + k * z_step_m, turns, length_m, inner_m, outer_m)
+    return table
 
 
 @njit(cache=True)
