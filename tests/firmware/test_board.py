@@ -205,6 +205,43 @@ def test_last_cycle_ends_a_program_when_that_cycle_is_complete():
     assert bench.state == "safe"
 
 
+def test_a_run_of_one_cycle_pumps_one_cycle():
+    rows = [(program.LOOP, 0, 0, 0, 0, 50), (program.CYCLE, 0, 0, 0, 0, 0),
+            (program.SEG, 0, 1, 500, 0, 20), (program.SEG, 0, 1, 0, 0, 20),
+            (program.NEXT, 0, 0, 0, 0, 0), (program.END, 0, 2, 0, 0, 0)]
+    bench = Bench(rows)
+    bench.go(last=1)
+    bench.ticks(200)
+    cycles = [fields for code, fields in journal(bench) if code == 0x90]
+    assert [(fields["cycle"], fields["duration_ticks"]) for fields in cycles] == [(1, 40)]
+
+
+def test_held_ticks_are_those_in_which_the_target_was_folded_back():
+    rows = [(program.LOOP, 0, 0, 0, 0, 9), (program.CYCLE, 0, 0, 0, 0, 0),
+            (program.SEG, 0, 1, 500, 0, 20), (program.SEG, 0, 1, 500, 0, 80),
+            (program.NEXT, 0, 0, 0, 0, 0), (program.END, 0, 2, 0, 0, 0)]
+    bench = Bench(rows, changes={"fold_rise_q8": 256})
+    bench.go()
+    bench.ticks(140)
+    bench.see(outlet=1000, chamber=-900)              # outlet reverse, soft
+    bench.ticks(10)
+    bench.see(outlet=392, chamber=0)
+    bench.ticks(151)
+    held = [fields["held_ticks"] for code, fields in journal(bench) if code == 0x90]
+    assert held == [0, 10, 0]
+
+
+def test_marks_are_journalled_with_their_number_zero_too():
+    rows = [(program.SEG, 0, 1, 500, 0, 5), (program.MARK, 0, 1, 0, 0, 0),
+            (program.SEG, 0, 1, 0, 0, 5), (program.MARK, 0, 2, 0, 0, 65535),
+            (program.SEG, 0, 2, 0, 0, 5), (program.END, 0, 2, 0, 0, 0)]
+    bench = Bench(rows)
+    bench.go()
+    bench.ticks(40)
+    marks = [(fields["mark"], fields["tick"]) for code, fields in journal(bench) if code == 0x91]
+    assert marks == [(0, 5), (65535, 10)]
+
+
 def test_a_program_without_end_is_refused():
     import binascii
 

@@ -46,6 +46,8 @@ CASES = [
     (trips.OUTLET_LOW, V["outlet_low_hard_pa"], lambda x: {"outlet": x, "chamber": 0}, -1),
     (trips.OVER_CURRENT, V["over_current_ma"], lambda x: {"coil_a": x, "outlet": 0}, 1),
     (trips.OVER_CURRENT, V["over_current_ma"], lambda x: {"coil_a": -x, "outlet": 0}, 1),
+    (trips.OVER_CURRENT, V["over_current_ma"], lambda x: {"coil_b": x, "outlet": 0}, 1),
+    (trips.OVER_CURRENT, V["over_current_ma"], lambda x: {"coil_b": -x, "outlet": 0}, 1),
 ]
 
 
@@ -65,7 +67,8 @@ def test_coil_temperature_fires_at_its_limit_and_not_one_millidegree_below():
 
 @pytest.mark.parametrize(("field", "make", "sign"), [
     ("outlet_reverse_soft_pa", lambda x: {"outlet": x - 900, "chamber": -900}, 1),
-    ("inlet_reverse_soft_pa", lambda x: {"chamber": x, "outlet": 0}, 1),
+    ("inlet_reverse_soft_pa", lambda x: {"chamber": x - 900, "inlet": -900, "outlet": 0}, 1),
+    ("chamber_high_soft_pa", lambda x: {"chamber": x, "inlet": 1000, "outlet": 0}, 1),
     ("chamber_low_soft_pa", lambda x: {"chamber": x, "outlet": -1000}, -1),
     ("outlet_high_soft_pa", lambda x: {"outlet": x, "chamber": 1000}, 1),
 ])
@@ -73,6 +76,38 @@ def test_soft_level_holds_back_at_its_limit_and_not_one_unit_below(field, make, 
     assert judge(make(V[field]))[1].soft is True
     assert judge(make(V[field]))[0] == 0
     assert judge(make(V[field] - sign))[1].soft is False
+
+
+@pytest.mark.parametrize("which", [0, 1])
+def test_either_winding_holds_back_and_trips_at_its_own_temperature(which):
+    def at(winding_mc: int) -> Interlocks:
+        _, locks = judge({"outlet": 0})
+        both = [22000, 22000]
+        both[which] = winding_mc
+        assert locks.judge(*both, 0, 0) == 0
+        return locks
+
+    assert at(V["hot_soft_mc"] - 1).soft is False
+    assert at(V["hot_soft_mc"]).soft is True
+    assert at(V["hot_hard_mc"] - 1).slow == 0
+    hot = at(V["hot_hard_mc"])
+    assert (hot.slow, hot.channel) == (trips.COIL_HOT, (limits.COIL_A, limits.COIL_B)[which])
+
+
+@pytest.mark.parametrize("sign", [1, -1])
+@pytest.mark.parametrize("coil", ["coil_a", "coil_b"])
+def test_coil_counts_as_open_below_half_its_target_and_from_its_least_target_on(coil, sign):
+    def counted(target_ma: int, current_ma: int) -> int:
+        _, locks = judge({"outlet": 0, coil: sign * current_ma})
+        targets = (sign * target_ma, 0) if coil == "coil_a" else (0, sign * target_ma)
+        locks.judge(22000, 22000, *targets)
+        return locks.open_ticks_a + locks.open_ticks_b
+
+    least = V["coil_open_ma"]
+    assert counted(least, 0) == 1
+    assert counted(least - 1, 0) == 0
+    assert counted(1000, 499) == 1
+    assert counted(1000, 500) == 0
 
 
 def test_coil_open_needs_its_ticks():
@@ -88,6 +123,16 @@ def test_every_rule_of_the_table_names_fields_that_exist_and_a_code_of_the_trips
         assert watches
         assert hard in limits.INDEX
         assert not soft or soft in limits.INDEX
+
+
+def test_interlock_trips_an_armed_board_that_does_not_run_yet():
+    bench = Bench()
+    assert bench.arm() == 0
+    bench.ticks(5)
+    bench.see(outlet=1000, chamber=-1400)
+    bench.ticks(1)
+    assert bench.board.trip_code == trips.OUTLET_REVERSE
+    assert bench.hal.last_drive == (0, 0, 0)
 
 
 @pytest.mark.parametrize("values", [
