@@ -142,7 +142,7 @@ def unguarded(tmp_path: Path) -> Rig:
     return load_rig(path)
 
 
-@pytest.mark.parametrize("seed", [1, 2, 3])
+@pytest.mark.parametrize("seed", [0, 1, 2, 3, 51, 59])    # the last two: the softest of 100 chambers
 def test_overdrive_collapses_a_valve_once_the_limits_are_out_of_the_way(
     unguarded: Rig, seed: int
 ) -> None:

@@ -47,6 +47,7 @@ def command(
     Exit code 3 when an interlock trips, 8 when a replayed case breaks an invariant. Logged only
     where --logbook names a logbook.
     """
+    from ..plant import warm_up
     from ..rig import load_rig
     from ..runner import dry_run
     from ..runner.signals import StopFlag
@@ -56,8 +57,10 @@ def command(
         loaded = load_rig(rig)
         plan = load_schedule(schedule)
         faulty = _faults(replay, loaded) if replay else None
-        bar = Progress(plan.title, compile_program(plan, loaded).cycles, "cycles")
+        cycles = compile_program(plan, loaded).cycles
         with StopFlag() as flag:
+            warm_up(loaded, say)
+            bar = Progress(plan.title, cycles, "cycles")
             try:
                 shown = dry_run(
                     loaded,
