@@ -197,7 +197,6 @@ class Board:
         self.end_why = messages.ENDED_FINISHED
         self.cycles.close(self.tick.winding_mc // 10, self.sequencer.step_now)
         self.move("END")
-        self.tick.ramping = True
 
     def down(self) -> None:
         """The ramp of a category 1 stop has reached zero."""

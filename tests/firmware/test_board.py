@@ -143,6 +143,68 @@ def test_a_trip_survives_a_reboot_and_is_cleared_only_by_its_name():
     assert third.board.trip_serial == serial
 
 
+def test_enable_is_off_from_the_first_thing_that_a_board_does():
+    assert Bench().hal.drives[0] == (0, 0, 0)
+
+
+def test_program_of_another_rig_is_not_armed():
+    bench = Bench()
+    bench.board.program.blob.fingerprint = b"another!"
+    assert bench.arm() == messages.FINGERPRINT_DIFFERS
+
+
+def test_heap_is_locked_from_arming_until_the_recorder_stands_still_and_the_latch_is_stored_once():
+    bench = bench_in("running")
+    saves = []
+    bench.hal.save = lambda name, data: saves.append((name, bytes(data)))
+    bench.hal.input_bits = 1                      # category 1: a ramp first
+    for _ in range(266):                          # 16 ticks of ramp lie inside the tail of 250
+        assert bench.board.locked == (bench.board.live or bench.hal.last_drive[2] == 1)
+        assert bench.board.locked or len(saves) == 1
+        bench.ticks(1)
+    assert not bench.board.locked
+    bench.ticks(20)
+    assert [name for name, _ in saves] == ["trip"]
+
+
+def test_each_trip_has_the_next_serial_and_a_trip_before_go_ends_no_run():
+    bench = bench_in("armed")
+    for serial in (1, 2):
+        bench.hal.input_bits = 2
+        bench.ticks(1)
+        assert bench.board.trip_serial == serial
+        bench.hal.input_bits = 0
+        bench.ticks(1)
+        assert bench.board.clear(trips.CUTOUT_OPEN, serial) == messages.OK
+        bench.ticks(1)
+        assert bench.arm() == messages.OK
+    assert [code for code, _ in journal(bench)] == [0x92, 0x92]
+
+
+@pytest.mark.parametrize("state", ["safe", "tripped", "maintenance"])
+def test_port_is_given_back_on_ctrl_c_or_maintenance_when_no_current_flows(state):
+    bench = bench_in(state)
+    if state == "maintenance":
+        assert bench.board.released
+        return
+    bench.board.interrupt()
+    bench.loop.run()                              # the recorder's tail first, then back
+    assert bench.hal.last_drive == (0, 0, 0)
+    assert bench.state == state
+
+
+def test_a_period_missed_is_counted_and_not_caught_up():
+    bench = bench_in("running")
+    for late_us, missed in ((999, 0), (1000, 1), (3500, 3)):
+        before = bench.board.late_ticks
+        ticks = bench.hal.feeds
+        bench.hal.idle(late_us)
+        bench.ticks(1)
+        assert bench.board.late_ticks - before == missed
+        assert bench.hal.feeds == ticks + 1
+        bench.ticks(3)
+
+
 def test_nothing_is_stored_while_current_may_flow():
     bench = bench_in("running")
     bench.see(outlet=1000, chamber=-1400)
