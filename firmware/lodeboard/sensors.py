@@ -66,7 +66,8 @@ class Sensors:
             value = ((raw * v[base + 1]) >> v[base + 2]) + v[base + 3]
             before = last[channel]
             if raw == before:
-                self.still[channel] += 1
+                if v[base + 6]:          # not watched, not counted: it would outgrow a small integer
+                    self.still[channel] += 1
                 if v[base + 6] and self.still[channel] >= v[base + 6] and found == 0:
                     found = self._implausible(trips.SENSOR_STUCK, channel, raw, v[base + 6])
             else:
