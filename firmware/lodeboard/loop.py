@@ -31,6 +31,7 @@ class Loop:
         if board.stalled:
             board.stalled = False
             self.due_us = now_us
+            self.last_us = now_us
         late_us = us_since(now_us, self.due_us)
         if late_us < 0:
             late_us = 0

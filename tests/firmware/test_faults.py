@@ -303,3 +303,36 @@ def test_coil_that_opens_under_negative_current_trips():
         bench.see(coil_a=0)
         bench.loop.step()
     assert bench.board.trip_code == trips.COIL_OPEN
+
+
+@pytest.mark.parametrize("name", ["limits", "program"])
+def test_a_byte_put_after_sealing_breaks_the_seal(name):
+    bench = Bench()
+    blob = getattr(bench.board, name).blob
+    assert blob.put(0, bytes(blob.data[:1]), 1)
+    assert bench.arm() == {"limits": messages.NO_LIMITS, "program": messages.NO_PROGRAM}[name]
+
+
+def test_bytes_that_do_not_fit_are_refused_and_store_nothing():
+    blob = limits.Blob(40)
+    assert blob.put(8, b"\x11" * 32, 32)
+    before = bytes(blob.data)
+    assert not blob.put(9, b"\x22" * 32, 32)           # beyond the end
+    assert not blob.put(0, b"\x22" * 8, 9)             # more than was sent
+    assert bytes(blob.data) == before
+
+
+def test_worst_gap_is_that_of_this_run():
+    bench = Bench()
+    bench.ticks(5)
+
+    def slow_guards() -> bool:
+        bench.hal.idle(20_000)                         # while arming: nobody's concern
+        return True
+
+    bench.hal.start_guards = slow_guards
+    bench.go()
+    bench.ticks(20)
+    bench.hal.idle(4000)
+    bench.ticks(20)
+    assert bench.board.worst_gap_us == 5000
