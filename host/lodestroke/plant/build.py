@@ -140,7 +140,7 @@ def _sensors(rig: Rig, substep_s: float) -> np.ndarray:
         if sensor is None:
             continue
         keep = 1.0 - math.exp(-substep_s / sensor.lag) if sensor.lag > 0.0 else 1.0
-        rows[n] = (
+        rows[n, : k.S_PRESENT + 1] = (
             sensor.low,
             sensor.high,
             sensor.counts_low,

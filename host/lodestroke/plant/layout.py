@@ -113,5 +113,18 @@ STICK_FLOW = 1e-8  # flow over which contact-line hysteresis changes sign, m3/s
 ) = range(16)
 
 # per sensor channel: low value, high value, counts at low, counts at high, full counts,
-# noise, lag factor per substep, present
-S_LOW, S_HIGH, S_CL, S_CH, S_FULL, S_NOISE, S_LAG, S_PRESENT, N_S = range(9)
+# noise, lag factor per substep, present, offset (value), gain error (relative), drift (value per tick)
+(
+    S_LOW,
+    S_HIGH,
+    S_CL,
+    S_CH,
+    S_FULL,
+    S_NOISE,
+    S_LAG,
+    S_PRESENT,
+    S_OFFSET,
+    S_GAIN,
+    S_DRIFT,
+    N_S,
+) = range(12)
