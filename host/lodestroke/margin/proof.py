@@ -14,7 +14,9 @@ from ..schedule.compile import Program, compile_program
 from ..schedule.heat import HeatBound, steady_winding_c
 from ..schedule.load import load_schedule
 from ..schedule.models import Plan
-from .price import push_pa
+from .field import places, push_pa
+from .interlocks import interlock_margins
+from .warn import Stroke
 
 _PLACES = 200
 
@@ -29,9 +31,8 @@ def prove_static(program: Program, rig: Rig) -> dict[str, Any]:
     currents = [max(abs(row[3]), abs(row[4])) / 1000 for row in rows if row[0] == board.SEG]
     peak = max(currents, default=0.0)
     heat = [heat_bound(program, rig, bool(i))[0] for i in range(len(rig.coils))]
-    half = rig.slug.travel / 2
-    pressure = max(abs(push_pa(rig, coil, half * (2 * k / _PLACES - 1), peak))
-                   for coil in rig.coils for k in range(_PLACES + 1))
+    pressure = max(abs(push_pa(rig, coil, x, peak))
+                   for coil in rig.coils for x in places(rig, _PLACES))
     return {
         "title": program.title,
         "duration_s": program.ticks * program.tick_s,
@@ -49,7 +50,26 @@ def prove_static(program: Program, rig: Rig) -> dict[str, Any]:
         "coil_repeated_c": max(repeated_c(program, rig, i) for i in range(len(rig.coils))),
         "pressure_bound_pa": pressure,
         "chamber_high_hard_pa": rig.limits.chamber_high.hard,
+        "strokes": [stroke._asdict() for stroke in strokes(program)],
+        "interlocks": interlock_margins(rig, peak) if peak > 0.0 else [],
     }
+
+
+def strokes(program: Program) -> list[Stroke]:
+    """Each kind of cycle in a program once: rate, length of its first edge, greatest current."""
+    found: list[Stroke] = []
+    inside, ticks, edge, peak = False, 0, 0, 0
+    for op, _, _, a, b, n in program.rows():
+        if op in (board.CYCLE, board.CLOSE, board.END) or (inside and op == board.NEXT):
+            if ticks:
+                stroke = Stroke(1.0 / (ticks * program.tick_s), edge * program.tick_s, peak / 1000)
+                if stroke not in found:
+                    found.append(stroke)
+            inside, ticks, edge, peak = op == board.CYCLE, 0, 0, 0
+        elif op == board.SEG and inside:
+            edge = edge or n
+            ticks, peak = ticks + n, max(peak, abs(a), abs(b))
+    return found
 
 
 def mean_square_a2(program: Program, coil: int = 0) -> float:
