@@ -11,6 +11,7 @@ from collections.abc import Callable, Iterator
 from typing import Any
 
 from ..units import show
+from . import checks_work as work
 from .models_board import Board, Driver
 from .models_limits import Limits
 from .models_pump import Channel, Coil, Inlet, Outlet, Slug, Spring, Valves
@@ -27,6 +28,13 @@ def check(*sections: str) -> Callable[[_Check], _Check]:
         _CHECKS.append((sections, function))
         return function
     return register
+
+
+check("coils", "slug", "limits", "valves", "inlet", "outlet")(work.coil_reaches_cracking)
+check("valves", "inlet", "outlet")(work.sides_hold_each_other)
+check("coils", "limits", "board")(work.heat_can_be_guarded)
+check("sensors", "limits")(work.differences_in_range)
+check("coils")(work.winding_is_metal)
 
 
 def rig_problems(good: dict[str, Any]) -> list[Problem]:
@@ -140,7 +148,11 @@ def _slug_in_channel(slug: Slug, channel: Channel) -> Iterator[Problem]:
         yield Problem(("slug", "travel"), "the slug travels much farther than it is long",
                       f"at most {show(4 * slug.length, 'm')}, four slug lengths",
                       "check the unit of travel and length")
-    if channel.length and slug.length + slug.travel > channel.length:
+    if channel.length and slug.length >= channel.length:
+        yield Problem(("slug", "length"), "the slug is longer than the channel",
+                      f"below {show(channel.length, 'm')} less its travel",
+                      "mend slug.length or channel.length")
+    elif channel.length and slug.length + slug.travel > channel.length:
         yield Problem(("slug", "length"), "slug and travel do not fit into the channel",
                       f"at most {show(channel.length - slug.travel, 'm')} for this channel",
                       "mend slug.length, slug.travel or channel.length")
