@@ -80,7 +80,7 @@ def wire(coil: Coil, current: float) -> dict[str, float]:
         "wire_awg": 36.0 - 39.0 * math.log(bare / 0.127e-3) / math.log(92.0),
         "copper_fill": coil.turns * copper / window,
         "current_density_a_mm2": current / copper * 1e-6,
-        "wheeler_h": wheeler_h(coil),
+        "wheeler_inductance_h": wheeler_h(coil),
     }
 
 

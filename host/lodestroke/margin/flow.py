@@ -52,10 +52,10 @@ def flow_numbers(rig: Rig, speed: float, resonance_hz: float) -> dict[str, Any]:
         "liquid_density_kg_m3": liquid.density, "liquid_viscosity_pa_s": liquid.viscosity,
         "reynolds_slug": reynolds(slug.density, slug.viscosity, speed, radius),
         "reynolds_liquid": reynolds(liquid.density, liquid.viscosity, speed, radius),
-        "womersley_slug_1_hz": womersley(slug.density, slug.viscosity, 1.0, radius),
+        "womersley_slug_at_1_hertz": womersley(slug.density, slug.viscosity, 1.0, radius),
         "womersley_slug_at_resonance": womersley(
             slug.density, slug.viscosity, resonance_hz, radius),
-        "womersley_liquid_1_hz": womersley(liquid.density, liquid.viscosity, 1.0, radius),
+        "womersley_liquid_at_1_hertz": womersley(liquid.density, liquid.viscosity, 1.0, radius),
         **_capillary(rig, speed, radius),
         "valve_time_constant_s": max(
             valve.resistance for valve in valves) * rig.chamber.compliance,

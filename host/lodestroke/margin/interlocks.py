@@ -83,6 +83,18 @@ def interlock_margins(rig: Rig, current_a: float | None = None) -> list[dict[str
     return [_row(rig, guard, current) for guard in guards(rig)]
 
 
+def margins_by_current(rig: Rig, points: int = 12) -> dict[str, Any]:
+    """Margin of each interlock over the strokes' current: current_a, and a list per interlock, Pa."""
+    currents = [rig.limits.current * (k + 1) / points for k in range(points)]
+    rows: dict[str, Any] = {"current_a": currents}
+    for guard in guards(rig):
+        doubt = K * rig.tolerances.collapse * guard.collapse_pa
+        least = guard.hard_pa + doubt_k2(*guard.sensors)
+        rows[guard.name] = [guard.collapse_pa - doubt - max(least, reached_pa(rig, guard, current))
+                            for current in currents]
+    return rows
+
+
 def _row(rig: Rig, guard: Guard, current: float) -> dict[str, Any]:
     uncertainty, doubt = doubt_k2(*guard.sensors), K * rig.tolerances.collapse * guard.collapse_pa
     level = guard.hard_pa + uncertainty
@@ -153,10 +165,7 @@ def bound_pa(rig: Rig, guard: Guard) -> float:
                                            strike.push_drive_pa(rig), late)
         return min(by_energy, inlet + strike.swing_volume_pa(rig)) - inlet
     outlet = rig.outlet.head if guard.name == "chamber_low" else limits.outlet_high.soft
-    late = late if len(rig.coils) > 1 else math.inf     # nothing to switch off: the swing goes on
-    by_energy = strike.energy_bound_pa(rig, -limits.chamber_high.hard, level - outlet,
-                                       strike.pull_drive_pa(rig), late)
-    return outlet + min(by_energy, strike.swing_volume_pa(rig) - outlet)
+    return outlet - strike.release_bound_pa(rig)        # a trip switches no spring off
 
 
 def _holds_up_to(rig: Rig, guard: Guard, current: float, most_pa: float) -> float:

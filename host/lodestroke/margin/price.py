@@ -18,12 +18,12 @@ from .field import (
 )
 from .field import face_pressure_pa as _face
 from .flow import flow_numbers
-from .interlocks import interlock_margins
+from .interlocks import interlock_margins, margins_by_current
 from .left_out import left_out
 from .pins import pin_table
 from .priming import priming
 from .sensing import sensor_table
-from .strike import pushes, release
+from .strike import pushes, release, thinned
 from .stroke import collapse_pa, stroke
 from .warn import Stroke, warnings
 from .watches import unguarded_s, watches
@@ -45,6 +45,8 @@ def price(rig: Rig, strokes: Sequence[Stroke] = ()) -> dict[str, Any]:
     alone = unguarded_s(rig, blind, collapse_pa(rig.valves.inlet))
     facts |= {
         "interlocks": interlock_margins(rig),
+        "margins_by_current": margins_by_current(rig),
+        "worst_strokes": [thinned("push", blind[0]), thinned("release", courses[-1])],
         "unguarded_s": alone,
         "watches": watches(rig, courses, alone),
         "flow": flow_numbers(rig, speed, facts["stroke"]["resonance_hz"]),

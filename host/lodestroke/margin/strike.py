@@ -6,9 +6,9 @@ the rear stop and from the middle. A **release** is full current gone at once (a
 while the slug stands at the end of its stroke; a second coil then pulls it back. The board judges
 readings behind their sensors' lag, up to a whole tick late; the current then falls by itself.
 
-Two bounds stand beside it, which no stroke between the other limits can pass: the energy that push
-and chamber can give the slug without drag (valves shut, from the opposite limit), and the volume from
-stop to stop on the chamber's compliance.
+A bound stands beside it, which no stroke between the other limits can pass: the energy that push,
+spring and chamber can give the slug without drag while the valves are shut, and the volume from stop
+to stop on the chamber's compliance.
 """
 
 from __future__ import annotations
@@ -23,13 +23,14 @@ from ..plant import layout as k
 from ..rig.models import Rig
 from ..rig.models_pump import Valve
 from ..schedule.heat import hot_resistance
-from .field import greatest_push_pa, inertance_pa_s2_m3, return_pa
+from .field import greatest_push_pa, inertance_pa_s2_m3, places, return_pa
 from .stroke import closing_pa, drawing_pa, front_m
 
 STEP_S = 1e-4
 _SWINGS = 1.5            # periods of slug on chamber that are followed
 _LONGEST_S = 2.0
 _NEVER_PA = 1e12
+_STARTS = 20             # chamber pressures that a release is tried from
 Judge = Callable[[float, float], float]      # (chamber, outlet) as read -> what is held to the level
 
 
@@ -166,6 +167,14 @@ def release(
     return run(rig, Case("release", start, current_a, outlet_pa, blocked, **guard))
 
 
+def thinned(kind: str, course: Course) -> dict[str, Any]:
+    """A course as lists for a plot, some 150 points: time_s, chamber_pa, outlet_pa, slug_m, current_a."""
+    step = max(1, len(course.time_s) // 150)
+    return {"kind": kind} | {
+        name: getattr(course, name)[::step]
+        for name in ("time_s", "chamber_pa", "outlet_pa", "slug_m", "current_a")}
+
+
 def omega(rig: Rig) -> float:
     """Rate constant of the slug's inertance on the chamber's compliance, 1/sqrt(I C), 1/s."""
     return 1.0 / math.sqrt(inertance_pa_s2_m3(rig) * rig.chamber.compliance)
@@ -182,10 +191,9 @@ def energy_bound_pa(
     """Greatest pressure after a level, by energy: no drag, valves shut, all of the drive for `seconds`
     after the level and none of it later.
 
-    For a rise: start_pa is the lowest pressure that another limit allows, drive_pa the greatest push.
-    A fall is the same with every sign turned. The slug crosses the level with
-    (q/ωC)² = (P - p0)² - (P - p)² (energy of a driven undamped oscillator), goes on as
-    P - (P - p) cos ωt + (q/ωC) sin ωt, and after the drive is gone peaks at the radius of its circle.
+    start_pa is the lowest pressure that another limit allows, drive_pa the greatest push. The slug
+    crosses the level with (q/ωC)² = (P - p0)² - (P - p)², a driven undamped oscillator, goes on as
+    P - (P - p) cos ωt + (q/ωC) sin ωt, and when the drive is gone peaks at the radius of its circle.
     """
     if drive_pa * 2.0 - start_pa <= level_pa:
         return level_pa                      # not even an undamped swing gets there
@@ -203,6 +211,26 @@ def push_drive_pa(rig: Rig) -> float:
     return greatest_push_pa(rig) + max(0.0, return_pa(rig, -rig.slug.travel / 2, 0.0))
 
 
-def pull_drive_pa(rig: Rig) -> float:
-    """All that can pull it back, as a positive pressure."""
-    return max(0.0, -min(return_pa(rig, rig.slug.travel / 2), return_pa(rig, 0.0)))
+def release_bound_pa(rig: Rig) -> float:
+    """Lowest chamber pressure after a release from the front stop, Pa: no drag, valves shut.
+
+    The slug goes back as long as what spring (and second coil) gave, and what the chamber held at the
+    start, is more than the chamber holds now: energy balance with C p²/2. Starts from any pressure
+    between the inlet's opening and the chamber's upper limit.
+    """
+    area, squeeze = rig.channel.area_m2, rig.chamber.compliance
+    way = list(reversed(places(rig)))
+    step = way[0] - way[1]
+    gained = [0.0]                           # from the front stop on, J
+    for x in way[:-1]:
+        gained.append(gained[-1] - return_pa(rig, x - step / 2) * area * step)
+    low, high = drawing_pa(rig), rig.limits.chamber_high.hard
+    lowest = low
+    for part in range(_STARTS + 1):
+        start = low + (high - low) * part / _STARTS
+        for n, gain in enumerate(gained):
+            now = start - area * n * step / squeeze
+            if gain + squeeze * (start**2 - now**2) / 2 < 0.0 and n:
+                break
+            lowest = min(lowest, now)
+    return lowest

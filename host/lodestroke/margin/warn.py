@@ -6,6 +6,7 @@ strokes of a schedule where there is one. It yields a Warn for what is beyond it
 
 from __future__ import annotations
 
+import importlib
 from collections.abc import Callable, Iterator, Sequence
 from dataclasses import asdict, dataclass
 from typing import Any, NamedTuple
@@ -56,6 +57,6 @@ def judgement(function: Judgement) -> Judgement:
 
 def warnings(rig: Rig, facts: dict[str, Any], strokes: Sequence[Stroke] = ()) -> list[Warn]:
     """All that will disappoint, in the order of the work: pump, coil, sensors and limits."""
-    from . import warn_coil, warn_limits, warn_pump  # noqa: F401 - they register themselves
-
+    for name in ("warn_pump", "warn_coil", "warn_limits"):      # they register themselves
+        importlib.import_module(f"{__package__}.{name}")
     return [found for judge in JUDGEMENTS for found in judge(rig, facts, strokes)]

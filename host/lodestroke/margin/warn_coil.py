@@ -62,11 +62,11 @@ def winding(rig: Rig, facts: dict[str, Any], strokes: Sequence[Stroke]) -> Itera
                        f"at most {FILL_MOST:.0%} (round wire, hexagonal): at least "
                        f"{brief(least, 'ohm')}",
                        "measure the coil: fewer turns, a higher resistance or a larger window")
-        ratio = part.inductance / coil["wheeler_h"]
+        ratio = part.inductance / coil["wheeler_inductance_h"]
         if not 1.0 / INDUCTANCE_FACTOR <= ratio <= INDUCTANCE_FACTOR:
             yield Warn("inductance_unlikely", "this inductance does not go with turns and window",
                        brief(part.inductance, "H"),
-                       f"about {brief(coil['wheeler_h'], 'H')} (Wheeler), within a "
+                       f"about {brief(coil['wheeler_inductance_h'], 'H')} (Wheeler), within a "
                        f"factor of {INDUCTANCE_FACTOR:g}", "measure it, or check the turns")
         copper = COPPER_J_M3_K * coil["wire_length_m"] * math.pi * coil["wire_diameter_m"]**2 / 4
         if not copper / 3.0 <= part.winding_heat <= 10.0 * copper:

@@ -98,17 +98,11 @@ def false_trips(rig: Rig, facts: dict[str, Any], strokes: Sequence[Stroke]) -> I
 @judgement
 def blind_times(rig: Rig, facts: dict[str, Any], strokes: Sequence[Stroke]) -> Iterator[Warn]:
     """Longer without eyes than a stroke needs to the collapse; insulation; what nobody watches."""
+    for name in ("tick_late", "sensor_range", "sensor_stuck"):
+        yield from _blind(name, [row for row in facts["watches"] if row["interlock"] == name
+                                 and row["margin"] is not None and row["margin"] < 0.0])
     for row in facts["watches"]:
-        words = row["interlock"].replace("_", " ")
         late = row["margin"] is not None and row["margin"] < 0.0
-        if late and row["interlock"] in ("tick_late", "sensor_range", "sensor_stuck"):
-            where = f" of {row['sensor']}" if "sensor" in row else ""
-            yield Warn("blind_too_long", f"the {words} interlock{where} leaves the valves unguarded for "
-                       "longer than a stroke needs",
-                       f"{brief(row['acts_within_s'], 's')} until it acts",
-                       f"{brief(row['acts_within_s'] + row['margin'], 's')} from rest to "
-                       "the inlet valve's collapse at full current",
-                       "a shorter time, or softer strokes")
         if late and row["interlock"] == "coil_hot":
             yield Warn("too_hot_for_insulation", "no common insulation bears the coil's limit",
                        row["note"], "below 190 degC with the heating until it acts",
@@ -128,6 +122,20 @@ def blind_times(rig: Rig, facts: dict[str, Any], strokes: Sequence[Stroke]) -> I
         yield Warn("freeze_unseen", "a frozen reading would not be noticed: " + ", ".join(unseen),
                    "noise below half a count, or `stuck` switched off", "half a count of noise",
                    "set `stuck`, or more gain: an honest reading moves")
+
+
+def _blind(name: str, rows: list[dict[str, Any]]) -> Iterator[Warn]:
+    """One warning of an interlock that acts too late, for whichever sensors."""
+    if not rows:
+        return
+    of = ", ".join(row["sensor"] for row in rows if "sensor" in row)
+    acts = max(row["acts_within_s"] for row in rows)
+    stroke = min(row["acts_within_s"] + row["margin"] for row in rows)
+    yield Warn("blind_too_long", f"the {name.replace('_', ' ')} interlock{' of ' if of else ''}{of} "
+               "leaves the valves unguarded for longer than a stroke needs",
+               f"{brief(acts, 's')} until it acts",
+               f"{brief(stroke, 's')} from rest to the inlet valve's collapse at full current",
+               "a shorter time, or softer strokes")
 
 
 @judgement

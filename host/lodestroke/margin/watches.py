@@ -155,7 +155,8 @@ def _stuck(rig: Rig, name: str, unguarded: float) -> dict[str, Any]:
     acts = ticks * rig.board.tick
     false = false_stuck_per_day(sensor.noise / resolution_si(sensor, name), ticks, rig.board.tick)
     guards = isinstance(sensor, PressureSensor)
-    return _row("sensor_stuck", acts, "s", f"by chance {false:.2g} times a day on a sound sensor"
+    chance = f"{false:.2g} times a day" if false > 1e-9 else "practically never"
+    return _row("sensor_stuck", acts, "s", f"by chance {chance} on a sound sensor"
                 + ("; margin: full current could reach the inlet valve's collapse only after that"
                    if guards else ""), sensor=name, acts_within_s=acts, false_per_day=false,
                 margin=unguarded - acts if guards else None)
