@@ -13,15 +13,21 @@ PUMP = (
 )
 
 
-@pytest.mark.parametrize("part", PUMP)
-def test_the_real_boards_rig_has_the_simulated_rigs_pump(part: str) -> None:
+BOARDS = ("rp2040", "esp32", "stm32")
+
+
+@pytest.mark.parametrize("board", BOARDS)
+def test_the_real_boards_rig_has_the_simulated_rigs_pump(board: str) -> None:
     simulated = load_rig(hil_configs_dir() / "bench-sim.toml")
-    real = load_rig(hil_configs_dir() / "bench-rp2040.toml")
-    assert getattr(simulated, part) == getattr(real, part)
+    real = load_rig(hil_configs_dir() / f"bench-{board}.toml")
+    assert [part for part in PUMP if getattr(simulated, part) != getattr(real, part)] == []
 
 
-def test_the_real_boards_rig_demands_a_deadman() -> None:
-    assert load_rig(hil_configs_dir() / "bench-rp2040.toml").limits.deadman is True
+@pytest.mark.parametrize("board", BOARDS)
+def test_the_real_boards_rig_demands_a_deadman_or_has_a_one_shot(board: str) -> None:
+    rig = load_rig(hil_configs_dir() / f"bench-{board}.toml")
+    assert rig.board.pins is not None
+    assert rig.limits.deadman is (rig.board.pins.one_shot is None)
 
 
 def test_shipped_files_are_where_they_are_looked_for() -> None:

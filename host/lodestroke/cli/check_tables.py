@@ -32,9 +32,9 @@ def show_tables(answer: dict[str, Any]) -> None:
     _watches(console, answer)
     _pairs(console, "Left out of the simulation by choice", answer["left_out"])
     if answer["pins"]:
-        _table(console, "Pins", ("signal", "pin", "way", ""),
-               [(row["signal"], str(row["pin"]), row["way"], row["what"]) for row in answer["pins"]],
-               left=(0, 2, 3))
+        _table(console, "Pins", ("signal", "pin", "way", "used as", "what", "mind"),
+               [(row["signal"], row["name"], row["way"], row["peripheral"], row["what"],
+                 row["care"]) for row in answer["pins"]], left=(0, 1, 2, 3, 4, 5))
     if answer["defaults"]:
         _pairs(console, "Defaults in force", answer["defaults"], raw=True)
     if "schedule" in answer:

@@ -6,6 +6,7 @@ from collections.abc import Sequence
 from typing import Any
 
 from ..rig.models import Rig
+from ..rig.pins import pin_table
 from .coils import price_coil
 from .field import (
     axis,
@@ -20,7 +21,6 @@ from .field import face_pressure_pa as _face
 from .flow import flow_numbers
 from .interlocks import interlock_margins, margins_by_current
 from .left_out import left_out
-from .pins import pin_table
 from .priming import priming
 from .sensing import sensor_table
 from .strike import pushes, release, thinned

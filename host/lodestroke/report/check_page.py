@@ -187,8 +187,9 @@ def _sensors(answer: dict[str, Any]) -> Section:
 def _rest(answer: dict[str, Any]) -> Section:
     tables = []
     if answer["pins"]:
-        tables.append(Table("Pins", ("signal", "pin", "way", "what"), [
-            (row["signal"], str(row["pin"]), row["way"], row["what"]) for row in answer["pins"]]))
+        tables.append(Table("Pins", ("signal", "pin", "way", "used as", "what", "mind"), [
+            (row["signal"], row["name"], row["way"], row["peripheral"], row["what"], row["care"])
+            for row in answer["pins"]]))
     if answer["defaults"]:
         tables.append(Table("Defaults in force", ("key", "default"),
                             list(answer["defaults"].items())))

@@ -11,6 +11,7 @@ from collections.abc import Callable, Iterator
 from typing import Any
 
 from ..units import show
+from . import checks_pins as pins
 from . import checks_work as work
 from .models_board import Board, Driver
 from .models_limits import Limits
@@ -35,6 +36,11 @@ check("valves", "inlet", "outlet")(work.sides_hold_each_other)
 check("coils", "limits", "board")(work.heat_can_be_guarded)
 check("sensors", "limits")(work.differences_in_range)
 check("coils")(work.winding_is_metal)
+check("board")(pins.pins_are_usable)
+check("board")(pins.bridges_have_outputs)
+check("board")(pins.buses_are_whole)
+check("board", "sensors")(pins.sensors_are_wired)
+check("board", "limits")(pins.enable_can_be_dropped)
 
 
 def rig_problems(good: dict[str, Any]) -> list[Problem]:
@@ -66,23 +72,7 @@ def _board(board: Board) -> Iterator[Problem]:
                       "remove the pins, or name the board's kind")
     if board.kind != "virtual" and board.pins is None:
         yield Problem(("board", "pins"), "missing", f"kind {board.kind} needs its pins",
-                      "see hil_configs/bench-rp2040.toml")
-    if board.pins is not None:
-        yield from _pins(board)
-
-
-def _pins(board: Board) -> Iterator[Problem]:
-    used: dict[int, str] = {}
-    top = 29 if board.kind == "rp2040" else 47
-    assert board.pins is not None
-    for name, pin in board.pins.model_dump(exclude_none=True).items():
-        path = ("board", "pins", name)
-        if pin > top:
-            yield Problem(path, "no such pin", f"at most {top} on {board.kind}", "name a free pin")
-        if pin in used:
-            yield Problem(path, f"pin {pin} is already {used[pin]}", "each pin once",
-                          "give one of them another pin")
-        used[pin] = name
+                      "see the shipped rig of this kind of board in hil_configs/")
 
 
 @check("coils")

@@ -129,7 +129,7 @@ def test_pin_used_twice_or_not_on_the_board_is_refused(edit: Edit) -> None:
                          name="bench-rp2040.toml"))
     assert "already" in twice.what
     beyond = refusal(edit((row, "bridge_a = 40"), name="bench-rp2040.toml"))
-    assert (beyond.what, beyond.bound) == ("no such pin", "at most 29 on rp2040")
+    assert (beyond.what, beyond.bound) == ("no such pin", "0 to 29 on rp2040")
 
 
 def test_bad_section_does_not_hide_problems_of_another(edit: Edit) -> None:
